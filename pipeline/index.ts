@@ -1,0 +1,2 @@
+export { DisturbanceTracker, type TrackerProblem } from "./disturbance-tracker.ts";
+export { watchDisturbances } from "./watch-disturbances.ts";

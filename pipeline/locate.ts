@@ -1,0 +1,172 @@
+/** Locating as a pure function: the captured frames of a line's measured ends in, the place with its stretch, flag and reasons out. */
+import type { Line } from "../config/index.ts";
+import type { TerminalCapture } from "./capture.ts";
+import { type Combined, combine, towerSpan } from "./combine.ts";
+import { judge } from "./direction.ts";
+import { type EndPhasors, faultCurrents, gatherEvidence } from "./evidence.ts";
+import { flagOf } from "./flag.ts";
+import { mixedFrame, unmixedPhasors, wholeWindowPhasors } from "./frame-choice.ts";
+import type { MeasuringWindow } from "./measuring-window.ts";
+import { selectPhases } from "./phase-selection.ts";
+import { type Progress, progressOf } from "./steadiness.ts";
+import type { LocateStage, Location } from "./types.ts";
+import { fitTiming, PROFILE, prepareEnd, type Timing } from "./unmix.ts";
+
+export interface CapturedEnd {
+  readonly capture: TerminalCapture;
+  readonly window: MeasuringWindow;
+  /** Stamp of the first frame that was disturbed, seconds from the epoch. */
+  readonly disturbedS: number;
+}
+
+export interface LineDisturbance {
+  readonly line: Line;
+  /** Ends with frames, in the order of the line's terminals. */
+  readonly ends: readonly CapturedEnd[];
+  readonly stationName: (stationId: string) => string;
+  readonly stage: LocateStage;
+}
+
+export type Finding =
+  | { readonly kind: "located"; readonly location: Location; readonly onsetS: number; /** Infinity while it lasts */ readonly clearingS: number }
+  | { readonly kind: "elsewhere"; readonly reason: string; readonly onsetS: number }
+  | { readonly kind: "wait" };
+
+/** What the fit leaves unexplained, as an error of the place: fraction of the line per unit of residual. Measured on the simulator's campaigns. */
+const PLACE_ERROR_OF_RESIDUAL = 0.3;
+/** Floor of what no draw covers (formulas, sampling), fraction of the line. */
+const PLACE_ERROR_FLOOR = 0.0007;
+
+interface Phasors {
+  readonly ends: readonly EndPhasors[];
+  readonly timing: Timing;
+  readonly residual: number | undefined;
+  readonly isMixed: boolean;
+}
+
+/** Never throws on data: what cannot be located yet is "wait". */
+export function locate(disturbance: LineDisturbance): Finding {
+  const progress = disturbance.ends.map((end) => progressOf(end.capture, end.disturbedS));
+  const phasors = progress.every((p) => p.restsSince !== undefined) ? settledPhasors(disturbance.ends) : earlyPhasors(disturbance.ends, progress);
+  if (!phasors) return { kind: "wait" };
+  const { ends, timing } = phasors;
+  const verdict = judge(ends);
+  const onsetS = timing.onsetS;
+  if (verdict.kind === "no fault") return { kind: "elsewhere", reason: verdict.reason, onsetS };
+  if (verdict.kind === "behind") {
+    const terminal = disturbance.line.terminals[verdict.endIndex]!;
+    return { kind: "elsewhere", reason: `behind ${disturbance.stationName(terminal.stationId)}, seen from ${disturbance.line.name}`, onsetS };
+  }
+  const location = locationOf(disturbance, phasors);
+  if (!location) return { kind: "wait" };
+  return { kind: "located", location, onsetS, clearingS: timing.clearingS };
+}
+
+/** All windows have passed all changes: fit onset and clearing on all ends together, then take the best phasors of each end. */
+function settledPhasors(ends: readonly CapturedEnd[]): Phasors | undefined {
+  const prepared = ends.map(({ capture, window }) => prepareEnd({ ...capture, window }, PROFILE.offsetS));
+  const earliest = Math.min(...ends.map((e) => e.disturbedS - e.capture.periodS));
+  const latest = Math.min(...ends.map((e) => e.disturbedS + e.window.halfS + 2 * e.capture.periodS));
+  const onsets = steps(earliest, latest, 0.004);
+  const durations = [...steps(0.02, 0.3, 0.01), Number.POSITIVE_INFINITY];
+  const { timing } = fitTiming(prepared, onsets, durations, PROFILE);
+  let residual: number | undefined;
+  const phasors = ends.map(({ capture, window }): EndPhasors => {
+    const whole = wholeWindowPhasors(capture, window, timing);
+    if (whole) return whole;
+    const unmixed = unmixedPhasors(capture, window, timing);
+    residual = Math.max(residual ?? 0, unmixed.residual);
+    return unmixed.end;
+  });
+  return { ends: phasors, timing, residual, isMixed: false };
+}
+
+const steps = (from: number, to: number, by: number): number[] => Array.from({ length: Math.max(1, Math.floor((to - from) / by + 1)) }, (_, k) => from + k * by);
+
+/** Excursion over its peak at which a frame is "deep in the fault", and change over peak at which two frames are alike. */
+const DEEP = 0.8;
+const ALIKE = 0.05;
+
+/**
+ * Before the clearing is known. A unit with a short window shows a plateau: its frames lie wholly in the fault. Units with the same longer window
+ * are compared on the deepest common frame.
+ */
+function earlyPhasors(ends: readonly CapturedEnd[], progress: readonly Progress[]): Phasors | undefined {
+  const plateaus = ends.flatMap((end, e) => {
+    const { capture, window } = end;
+    const { excursionAmp, changeAmp, peakAmp } = progress[e]!;
+    const n = [...capture.timesS.keys()].find((k) => capture.timesS[k]! >= end.disturbedS && excursionAmp[k]! > DEEP * peakAmp && changeAmp[k]! < ALIKE * peakAmp);
+    if (n === undefined || capture.timesS[n]! < end.disturbedS + window.halfS) return [];
+    const at = capture.timesS[n]!;
+    const timing = { onsetS: at - window.halfS - 1e-6, clearingS: at + window.halfS + 1e-6 };
+    const phasors = wholeWindowPhasors(capture, window, timing);
+    return phasors ? [{ phasors, timing }] : [];
+  });
+  if (plateaus.length > 0) {
+    const timing = { onsetS: Math.min(...plateaus.map((p) => p.timing.onsetS)), clearingS: Number.POSITIVE_INFINITY };
+    return { ends: plateaus.map((p) => p.phasors), timing, residual: undefined, isMixed: false };
+  }
+  const [a, b] = ends;
+  if (!a || !b || a.window.origin !== b.window.origin) return undefined;
+  const deepest = (end: CapturedEnd, p: Progress) => end.capture.timesS[p.excursionAmp.indexOf(p.peakAmp)]!;
+  const at = Math.min(deepest(a, progress[0]!), deepest(b, progress[1]!));
+  if (at < Math.max(a.disturbedS, b.disturbedS) + a.window.halfS) return undefined;
+  const phasors = [mixedFrame(a.capture, a.window, a.disturbedS, at), mixedFrame(b.capture, b.window, b.disturbedS, at)].filter((x) => x !== undefined);
+  if (phasors.length < 2) return undefined;
+  const onsetS = Math.min(a.disturbedS, b.disturbedS) + a.window.halfS / 2;
+  return { ends: phasors, timing: { onsetS, clearingS: Number.POSITIVE_INFINITY }, residual: undefined, isMixed: true };
+}
+
+function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Phasors): Location | undefined {
+  const { line } = x;
+  const { type, marginDegrees } = selectPhases(faultCurrents(ends));
+  const all = gatherEvidence(line, type, ends);
+  // Mixing spoils what one end says, not what two ends with the same window say.
+  const evidence = isMixed ? { ...all, answers: all.answers.map((a) => (a.ends.length < 2 ? { ...a, isOnlyShown: true } : a)) } : all;
+  const extraSd = Math.hypot(PLACE_ERROR_FLOOR, PLACE_ERROR_OF_RESIDUAL * (residual ?? 0));
+  const stationOf = (e: number) => ends[e]!.terminal.stationId;
+  const combined = combine(
+    line,
+    evidence,
+    extraSd,
+    (used) => [...new Set(used.map((e) => ends[e]!.frames))].join("; "),
+    (used) => used.map(stationOf),
+  );
+  if (!combined) return undefined;
+  const name = (e: EndPhasors) => x.stationName(e.terminal.stationId);
+  const { flag, reasons } = flagOf({
+    combined,
+    lengthKm: line.lengthKm,
+    stage: x.stage,
+    measuredAt: ends.map(name),
+    unmeasured: line.terminals.filter((t) => !ends.some((e) => e.terminal.id === t.id)).map((t) => x.stationName(t.stationId)),
+    residual,
+    frames: [...new Set(ends.map((e) => e.frames))].join("; "),
+    phaseMarginDegrees: marginDegrees,
+    missingFrames: x.ends.reduce((s, e) => s + e.capture.missingFrames, 0),
+    unsynchronisedAt: x.ends.filter((e) => !e.capture.isSynchronised).map((e) => x.stationName(e.capture.terminal.stationId)),
+    isStillOn: x.stage !== "provisional" && timing.clearingS === Number.POSITIVE_INFINITY,
+  });
+  const spanTowers = towerSpan(line.towers, combined.km, combined.km);
+  return {
+    lineId: line.id,
+    phases: type,
+    km: combined.km,
+    ...(spanTowers ? { spanTowers } : {}),
+    pieces: combined.pieces,
+    stretchKm: hull(combined),
+    flag,
+    reasons,
+    resistanceOhm: resistanceOf(combined),
+    estimates: combined.estimates,
+    density: combined.density,
+  };
+}
+
+const hull = ({ pieces }: Combined): readonly [number, number] => [Math.min(...pieces.map((p) => p.lowKm)), Math.max(...pieces.map((p) => p.highKm))];
+
+/** Of the answer that counts most and knows one. */
+function resistanceOf({ estimates }: Combined): number | null {
+  const known = estimates.filter((e) => e.resistanceOhm !== undefined && e.weight > 0).sort((p, q) => q.weight - p.weight);
+  return known[0]?.resistanceOhm ?? null;
+}
