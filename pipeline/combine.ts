@@ -29,7 +29,13 @@ export interface Combined {
  * @param extraSd  standard deviation to add to each answer beyond what the draws hold, fraction of the line: what the fit leaves unexplained
  * @returns undefined when no method gave a usable answer
  */
-export function combine(line: Line, evidence: Evidence, extraSd: number, framesOf: (ends: readonly number[]) => string, stationsOf: (ends: readonly number[]) => string[]): Combined | undefined {
+export function combine(
+  line: Line,
+  evidence: Evidence,
+  extraSd: number,
+  framesOf: (ends: readonly number[]) => string,
+  stationsOf: (ends: readonly number[]) => string[],
+): Combined | undefined {
   const { answers, draws } = evidence;
   const valid = (k: number) => {
     const finite = draws.filter((d) => Number.isFinite(d[k]!)).length;
@@ -55,7 +61,13 @@ export function combine(line: Line, evidence: Evidence, extraSd: number, framesO
   }
   const parts = isQuarrel
     ? quarrelParts(used.map((_, i) => ({ at: m(i), sd: Math.sqrt(covariance[i]![i]!), spread: whole.map((d) => d[used[i]!]!) })))
-    : [{ share: 1, at: weights.reduce((s, w, i) => s + w * m(i), 0), spread: whole.map((d) => weights.reduce((s, w, i) => s + w * d[used[i]!]!, 0)) }];
+    : [
+        {
+          share: 1,
+          at: weights.reduce((s, w, i) => s + w * m(i), 0),
+          spread: whole.map((d) => weights.reduce((s, w, i) => s + w * d[used[i]!]!, 0)),
+        },
+      ];
   const perStep = densityOf(parts, extraSd);
   const stepKm = line.lengthKm / STEPS;
   const pieces = smallestPieces(perStep, stepKm, line.towers);
@@ -152,7 +164,8 @@ function densityOf(parts: readonly Part[], extraSd: number): number[] {
       const middle = at + x - centre;
       const first = Math.max(0, Math.floor((middle - 5 * width) * STEPS));
       const last = Math.min(STEPS - 1, Math.ceil((middle + 5 * width) * STEPS));
-      for (let s = first; s <= last; s++) out[s] = out[s]! + (share * Math.exp(-0.5 * (((s + 0.5) / STEPS - middle) / width) ** 2)) / width;
+      for (let s = first; s <= last; s++)
+        out[s] = out[s]! + (share * Math.exp(-0.5 * (((s + 0.5) / STEPS - middle) / width) ** 2)) / width;
     }
   }
   const total = out.reduce((s, p) => s + p, 0);

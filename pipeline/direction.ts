@@ -7,7 +7,10 @@ import { abs, type Complex, conj, mul, scale, sub } from "./complex.ts";
 import type { EndPhasors } from "./evidence.ts";
 import { toSequence } from "./sequence.ts";
 
-export type Verdict = { readonly kind: "on the line" } | { readonly kind: "behind"; readonly endIndex: number } | { readonly kind: "no fault"; readonly reason: string };
+export type Verdict =
+  | { readonly kind: "on the line" }
+  | { readonly kind: "behind"; readonly endIndex: number }
+  | { readonly kind: "no fault"; readonly reason: string };
 
 /** Fall of a phase voltage, and negative sequence over superimposed positive sequence current, under both of which nothing short-circuits. Load and
  * capacitor switching move transmission voltages by up to some 2-3 %: common practice, no source. */
@@ -41,10 +44,10 @@ export function judge(ends: readonly EndPhasors[]): Verdict {
     const i = toSequence([delta(end, 3), delta(end, 4), delta(end, 5)]);
     return abs(i.negative) / Math.max(abs(i.positive), 1e-9);
   });
-  if (dip < DIP && unbalance < UNBALANCE) return { kind: "no fault", reason: "not a fault: balanced change without a voltage dip" };
+  if (dip < DIP && unbalance < UNBALANCE)
+    return { kind: "no fault", reason: "not a fault: balanced change without a voltage dip" };
   const wasOpen = ends.every((end) => [3, 4, 5].every((c) => abs(end.pre[c]!) < OPEN_SHARE * abs(end.fault[c]!)));
   if (wasOpen && dip < DIP) return { kind: "no fault", reason: "not a fault: current came back" };
   for (const end of ends) if (forwardness(end) < 0) return { kind: "behind", endIndex: end.terminal.index };
   return { kind: "on the line" };
 }
-

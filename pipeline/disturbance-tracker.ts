@@ -75,7 +75,15 @@ export class DisturbanceTracker {
         if (!terminal.measured) continue;
         const feed = network.feeds.find((f) => f.id === terminal.measured!.feedId)!;
         const window = referenceWindow(feed.pmuClass, network.frequencyHz, feed.reportingRateHz);
-        const watched: Watched = { terminal, line, window, nominalHz: network.frequencyHz, ring: undefined, view: undefined, detector: undefined };
+        const watched: Watched = {
+          terminal,
+          line,
+          window,
+          nominalHz: network.frequencyHz,
+          ring: undefined,
+          view: undefined,
+          detector: undefined,
+        };
         this.#byFeed.set(feed.id, [...(this.#byFeed.get(feed.id) ?? []), watched]);
         this.#byTerminal.set(terminal.id, watched);
       }
@@ -119,7 +127,9 @@ export class DisturbanceTracker {
   }
 
   #take(watched: Watched, trigger: Trigger, events: DisturbanceEvent[]): void {
-    const same = this.#open.find((o) => Math.abs(o.detectedUs - trigger.timeUs) < SAME_MOMENT_US || o.triggers.has(watched.terminal.id));
+    const same = this.#open.find(
+      (o) => Math.abs(o.detectedUs - trigger.timeUs) < SAME_MOMENT_US || o.triggers.has(watched.terminal.id),
+    );
     if (same) {
       if (!same.triggers.has(watched.terminal.id)) same.triggers.set(watched.terminal.id, trigger);
       return;
@@ -165,7 +175,8 @@ export class DisturbanceTracker {
     const rest = this.#restOf(open, lines);
     if (rest === "moving" && sinceUs < STILL_ON_US) open.restUs = undefined;
     else open.restUs ??= this.#newestUs;
-    const isSettled = open.restUs !== undefined && this.#newestUs - open.restUs >= SETTLE_US && (rest === "all" || sinceUs > OTHER_END_US);
+    const isSettled =
+      open.restUs !== undefined && this.#newestUs - open.restUs >= SETTLE_US && (rest === "all" || sinceUs > OTHER_END_US);
     const isFinal = isSettled || isDeadline;
     const stage: LocateStage = isFinal ? "settled" : rest === "all" ? "refined" : "provisional";
     if (open.stage === stage || (open.stage === "refined" && stage === "provisional")) return isDeadline;
@@ -183,7 +194,13 @@ export class DisturbanceTracker {
     return isFinal && (isDeadline || open.isCleared || !best);
   }
 
-  #tell(open: Open, line: Line, finding: Extract<Finding, { kind: "located" }>, stage: LocateStage, events: DisturbanceEvent[]): void {
+  #tell(
+    open: Open,
+    line: Line,
+    finding: Extract<Finding, { kind: "located" }>,
+    stage: LocateStage,
+    events: DisturbanceEvent[],
+  ): void {
     open.stage = stage;
     const clearedUs = finding.clearingS === Number.POSITIVE_INFINITY ? null : this.#toUs(open, finding.clearingS);
     const location = { ...finding.location, reasons: [...finding.location.reasons, ...whatChanged(open.told, finding.location)] };
@@ -200,7 +217,14 @@ export class DisturbanceTracker {
     if (clearedUs !== null && !open.isCleared) {
       open.isCleared = true;
       const noCurrentAt = this.#withoutCurrent(open, line);
-      events.push({ kind: "cleared", disturbanceId: open.id, dataTimeUs: this.#newestUs, lineId: line.id, clearedUs, noCurrentAt });
+      events.push({
+        kind: "cleared",
+        disturbanceId: open.id,
+        dataTimeUs: this.#newestUs,
+        lineId: line.id,
+        clearedUs,
+        noCurrentAt,
+      });
     }
   }
 
@@ -239,7 +263,14 @@ export class DisturbanceTracker {
     if (!watched.view) return undefined;
     const epochUs = this.#epochUs(open);
     const disturbedUs = open.triggers.get(watched.terminal.id)?.timeUs ?? open.detectedUs;
-    const capture = captureTerminal(watched.view, watched.nominalHz, epochUs, disturbedUs - BEFORE_US, this.#newestUs, disturbedUs);
+    const capture = captureTerminal(
+      watched.view,
+      watched.nominalHz,
+      epochUs,
+      disturbedUs - BEFORE_US,
+      this.#newestUs,
+      disturbedUs,
+    );
     if (capture.timesS.length < 6) return undefined;
     return { capture, window: watched.window, disturbedS: (disturbedUs - epochUs) / 1e6 };
   }
@@ -259,7 +290,9 @@ export class DisturbanceTracker {
       if (!end) return [];
       const { peakAmp } = progressOf(end.capture, end.disturbedS);
       const last = (end.capture.timesS.length - 1) * 12;
-      const largest = Math.max(...[6, 8, 10].map((c) => Math.hypot(end.capture.phasors[last + c]!, end.capture.phasors[last + c + 1]!)));
+      const largest = Math.max(
+        ...[6, 8, 10].map((c) => Math.hypot(end.capture.phasors[last + c]!, end.capture.phasors[last + c + 1]!)),
+      );
       return largest < NO_CURRENT_SHARE * peakAmp ? [w.terminal.stationId] : [];
     });
   }
@@ -272,10 +305,17 @@ const strength = (finding: Extract<Finding, { kind: "located" }>): number => {
 };
 
 /** In words, when the new place is not the old one. */
-function whatChanged(before: Open["told"], now: { lineId: string; km: number | null; stretchKm: readonly [number, number] | null }): string[] {
+function whatChanged(
+  before: Open["told"],
+  now: { lineId: string; km: number | null; stretchKm: readonly [number, number] | null },
+): string[] {
   if (!before) return [];
   if (before.lineId !== now.lineId) return ["another line than told before"];
   if (now.km === null || !before.stretch) return [];
   const isInside = now.km >= before.stretch[0] && now.km <= before.stretch[1];
-  return [isInside ? "place within the stretch told before" : `place outside the stretch told before (${before.stretch[0].toFixed(1)}-${before.stretch[1].toFixed(1)} km)`];
+  return [
+    isInside
+      ? "place within the stretch told before"
+      : `place outside the stretch told before (${before.stretch[0].toFixed(1)}-${before.stretch[1].toFixed(1)} km)`,
+  ];
 }

@@ -37,6 +37,8 @@ export interface MethodAnswer {
   readonly resistanceOhm?: number;
 }
 
+export const NEGATIVE_TWO_ENDED = "two-ended negative sequence";
+
 interface LineModel {
   readonly z1: Complex;
   readonly z0: Complex;
@@ -60,7 +62,12 @@ function sequencesOf(pre: readonly Complex[], fault: readonly Complex[]): EndSeq
 }
 
 /** Every method on one set of phasors. `turns`: angle [rad] by which the fault's current leads each end's superimposed current. */
-function answersOf(type: FaultType, ends: readonly { index: number; pre: readonly Complex[]; fault: readonly Complex[] }[], model: LineModel, turns: readonly number[]): MethodAnswer[] {
+function answersOf(
+  type: FaultType,
+  ends: readonly { index: number; pre: readonly Complex[]; fault: readonly Complex[] }[],
+  model: LineModel,
+  turns: readonly number[],
+): MethodAnswer[] {
   const answers: MethodAnswer[] = [];
   const k0 = div(sub(model.z0, model.z1), scale(model.z1, 3));
   const seqs = ends.map((end) => sequencesOf(end.pre, end.fault));
@@ -74,7 +81,13 @@ function answersOf(type: FaultType, ends: readonly { index: number; pre: readonl
     answers.push(
       { method: "simple reactance", ends: [e], isOnlyShown: true, witness, m: mirrored(simpleReactance(loopV, loopI, model.z1)) },
       { method: "Takagi", ends: [e], isOnlyShown: true, witness, m: mirrored(takagi(loopV, loopI, loopDelta, model.z1)) },
-      { method: "Takagi, long line", ends: [e], isOnlyShown: false, witness, m: mirrored(takagiLongLine(type, seq, model, turns[e]!)) },
+      {
+        method: "Takagi, long line",
+        ends: [e],
+        isOnlyShown: false,
+        witness,
+        m: mirrored(takagiLongLine(type, seq, model, turns[e]!)),
+      },
     );
   });
   const a = ends.findIndex((end) => end.index === 0);
@@ -83,16 +96,29 @@ function answersOf(type: FaultType, ends: readonly { index: number; pre: readonl
     const [sa, sb] = [seqs[a]!, seqs[b]!];
     const both = (method: string, line: SequenceLine, pick: (s: EndSequences) => { v: Complex; i: Complex }) => {
       const m = twoEndedSynchronised(line, pick(sa), pick(sb)).re;
-      answers.push({ method, ends: [a, b], isOnlyShown: false, witness: "both ends", m, ...resistanceAt(type, m, sa, sb, model) });
+      answers.push({
+        method,
+        ends: [a, b],
+        isOnlyShown: false,
+        witness: "both ends",
+        m,
+        ...resistanceAt(type, m, sa, sb, model),
+      });
     };
-    if (type !== "ABC") both("two-ended negative sequence", model.line1, (s) => ({ v: s.deltaV.negative, i: s.deltaI.negative }));
+    if (type !== "ABC") both(NEGATIVE_TWO_ENDED, model.line1, (s) => ({ v: s.deltaV.negative, i: s.deltaI.negative }));
     both("two-ended superimposed positive sequence", model.line1, (s) => ({ v: s.deltaV.positive, i: s.deltaI.positive }));
   }
   return answers;
 }
 
 /** Fault resistance from the voltage at the place and the sum of both ends' currents there: mean over the faulted phases, or between the pair. */
-function resistanceAt(type: FaultType, m: number, a: EndSequences, b: EndSequences, model: LineModel): { resistanceOhm?: number } {
+function resistanceAt(
+  type: FaultType,
+  m: number,
+  a: EndSequences,
+  b: EndSequences,
+  model: LineModel,
+): { resistanceOhm?: number } {
   if (!(m > -0.1 && m < 1.1)) return {};
   const fromA = sequencesAlong(model, a.v, a.i, m);
   const fromB = sequencesAlong(model, b.v, b.i, 1 - m);
@@ -130,7 +156,12 @@ const SD_OF_LIMIT = 1 / Math.sqrt(3);
 export function gatherEvidence(line: Line, type: FaultType, ends: readonly EndPhasors[], seed = 1): Evidence {
   const { z1, z0, b1, b0, z1Percent, z0Percent } = line.constants;
   const plain = ends.map((end) => ({ index: end.terminal.index, pre: end.pre, fault: end.fault }));
-  const answers = answersOf(type, plain, modelOf(z1, z0, b1, b0), ends.map(() => 0));
+  const answers = answersOf(
+    type,
+    plain,
+    modelOf(z1, z0, b1, b0),
+    ends.map(() => 0),
+  );
   const normal = normalDeviates(seed);
   const draws = Array.from({ length: DRAWS }, () => {
     const model = modelOf(stretched(z1, z1Percent, normal), stretched(z0, z0Percent, normal), b1, b0);
@@ -161,8 +192,13 @@ function gainOf(limit: TransformerClass, normal: () => number): Complex {
 export function faultCurrents(ends: readonly EndPhasors[]) {
   return ends
     .map((end) => sequencesOf(end.pre, end.fault).deltaI)
-    .reduce((sum, i) => ({ zero: add(sum.zero, i.zero), positive: add(sum.positive, i.positive), negative: add(sum.negative, i.negative) }));
+    .reduce((sum, i) => ({
+      zero: add(sum.zero, i.zero),
+      positive: add(sum.positive, i.positive),
+      negative: add(sum.negative, i.negative),
+    }));
 }
 
 /** Largest superimposed phase current of an end [A]. */
-export const superimposedAmp = (end: EndPhasors): number => Math.max(...[3, 4, 5].map((c) => abs(sub(end.fault[c]!, end.pre[c]!))));
+export const superimposedAmp = (end: EndPhasors): number =>
+  Math.max(...[3, 4, 5].map((c) => abs(sub(end.fault[c]!, end.pre[c]!))));

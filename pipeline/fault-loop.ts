@@ -1,5 +1,5 @@
 /** Which phases a fault type joins, and the loop voltage and current that see it. */
-import { type Complex, complex, add, scale, sub } from "./complex.ts";
+import { add, type Complex, complex, scale, sub } from "./complex.ts";
 import { type Abc, type Sequence, toPhases } from "./sequence.ts";
 import type { FaultType } from "./types.ts";
 

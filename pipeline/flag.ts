@@ -48,7 +48,13 @@ export function flagOf(x: FlagInputs): { flag: Flag; reasons: string[] } {
   for (const station of x.unsynchronisedAt) reasons.push(`clock at ${station} not synchronised`);
   if (x.isStillOn) reasons.push("fault current still flows");
   if (x.stage === "provisional") reasons.push("so far: more frames to come");
-  const isDoubtful = x.combined.isQuarrel || (x.residual ?? 0) > POOR_RESIDUAL || x.unsynchronisedAt.length > 0 || x.phaseMarginDegrees < 8;
-  const flag: Flag = width <= FIRM_STRETCH && !isDoubtful && x.measuredAt.length >= 2 ? "firm" : width <= FAIR_STRETCH && !isDoubtful ? "fair" : "rough";
+  const isDoubtful =
+    x.combined.isQuarrel || (x.residual ?? 0) > POOR_RESIDUAL || x.unsynchronisedAt.length > 0 || x.phaseMarginDegrees < 8;
+  const flag: Flag =
+    width <= FIRM_STRETCH && !isDoubtful && x.measuredAt.length >= 2
+      ? "firm"
+      : width <= FAIR_STRETCH && !isDoubtful
+        ? "fair"
+        : "rough";
   return { flag, reasons };
 }

@@ -29,7 +29,9 @@ function meanOf(frames: readonly Complex[][]): { mean: Complex[]; sd: number[] }
   const mean = Array.from({ length: CHANNELS }, (_, c) =>
     complex(frames.reduce((s, f) => s + f[c]!.re, 0) / n, frames.reduce((s, f) => s + f[c]!.im, 0) / n),
   );
-  const sd = mean.map((m, c) => Math.sqrt(frames.reduce((s, f) => s + (f[c]!.re - m.re) ** 2 + (f[c]!.im - m.im) ** 2, 0) / Math.max(1, 2 * n - 2)));
+  const sd = mean.map((m, c) =>
+    Math.sqrt(frames.reduce((s, f) => s + (f[c]!.re - m.re) ** 2 + (f[c]!.im - m.im) ** 2, 0) / Math.max(1, 2 * n - 2)),
+  );
   return { mean, sd };
 }
 
@@ -61,10 +63,21 @@ export function wholeWindowPhasors(capture: TerminalCapture, window: MeasuringWi
 }
 
 /** The states of the unmixing fit. */
-export function unmixedPhasors(capture: TerminalCapture, window: MeasuringWindow, timing: Timing): { end: EndPhasors; residual: number } {
+export function unmixedPhasors(
+  capture: TerminalCapture,
+  window: MeasuringWindow,
+  timing: Timing,
+): { end: EndPhasors; residual: number } {
   const states = statesAt(prepareEnd({ ...capture, window }, PROFILE.offsetS), timing, PROFILE);
   return {
-    end: { terminal: capture.terminal, pre: states.pre, fault: states.fault, preSd: states.preSd, faultSd: states.faultSd, frames: "unmixed" },
+    end: {
+      terminal: capture.terminal,
+      pre: states.pre,
+      fault: states.fault,
+      preSd: states.preSd,
+      faultSd: states.faultSd,
+      frames: "unmixed",
+    },
     residual: states.residual,
   };
 }
@@ -73,7 +86,12 @@ export function unmixedPhasors(capture: TerminalCapture, window: MeasuringWindow
 const MIXED_ERROR = 0.004;
 
 /** The frame at `atS`, deep in the fault but mixed with what was before. */
-export function mixedFrame(capture: TerminalCapture, window: MeasuringWindow, firstDisturbedS: number, atS: number): EndPhasors | undefined {
+export function mixedFrame(
+  capture: TerminalCapture,
+  window: MeasuringWindow,
+  firstDisturbedS: number,
+  atS: number,
+): EndPhasors | undefined {
   const pre = before(capture, Math.min(firstDisturbedS - 2 * capture.periodS, atS - window.halfS));
   const [n] = indices(capture, (t) => Math.abs(t - atS) < 1e-4);
   if (!pre || n === undefined) return undefined;
@@ -83,7 +101,9 @@ export function mixedFrame(capture: TerminalCapture, window: MeasuringWindow, fi
     pre: pre.mean,
     fault,
     preSd: pre.sd.map((s) => s / Math.sqrt(pre.count)),
-    faultSd: fault.map((x, c) => Math.hypot(pre.sd[c]!, MIXED_ERROR * Math.hypot(x.re - pre.mean[c]!.re, x.im - pre.mean[c]!.im))),
+    faultSd: fault.map((x, c) =>
+      Math.hypot(pre.sd[c]!, MIXED_ERROR * Math.hypot(x.re - pre.mean[c]!.re, x.im - pre.mean[c]!.im)),
+    ),
     frames: "mid-fault frame",
   };
 }

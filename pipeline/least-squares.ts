@@ -17,7 +17,8 @@ export interface LeastSquares {
  * A column that is (nearly) a combination of earlier ones gets a zero on the diagonal; `solveTriangular` then leaves its unknown at zero.
  */
 export function reduce(a: Float64Array, b: Float64Array, rows: number, columns: number, rights: number): number {
-  if (a.length < rows * columns || b.length < rows * rights) throw new RangeError(`arrays too short for ${rows} x ${columns} and ${rights} right-hand sides`);
+  if (a.length < rows * columns || b.length < rows * rights)
+    throw new RangeError(`arrays too short for ${rows} x ${columns} and ${rights} right-hand sides`);
   if (rows < columns) throw new RangeError(`${rows} rows cannot determine ${columns} unknowns`);
   for (let k = 0; k < columns; k++) {
     let norm = 0;

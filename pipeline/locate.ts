@@ -3,7 +3,7 @@ import type { Line } from "../config/index.ts";
 import type { TerminalCapture } from "./capture.ts";
 import { type Combined, combine, towerSpan } from "./combine.ts";
 import { judge } from "./direction.ts";
-import { type EndPhasors, faultCurrents, gatherEvidence } from "./evidence.ts";
+import { type EndPhasors, type Evidence, faultCurrents, gatherEvidence, NEGATIVE_TWO_ENDED } from "./evidence.ts";
 import { flagOf } from "./flag.ts";
 import { mixedFrame, unmixedPhasors, wholeWindowPhasors } from "./frame-choice.ts";
 import type { MeasuringWindow } from "./measuring-window.ts";
@@ -28,7 +28,12 @@ export interface LineDisturbance {
 }
 
 export type Finding =
-  | { readonly kind: "located"; readonly location: Location; readonly onsetS: number; /** Infinity while it lasts */ readonly clearingS: number }
+  | {
+      readonly kind: "located";
+      readonly location: Location;
+      readonly onsetS: number /** Infinity while it lasts */;
+      readonly clearingS: number;
+    }
   | { readonly kind: "elsewhere"; readonly reason: string; readonly onsetS: number }
   | { readonly kind: "wait" };
 
@@ -36,6 +41,8 @@ export type Finding =
 const PLACE_ERROR_OF_RESIDUAL = 0.3;
 /** Floor of what no draw covers (formulas, sampling), fraction of the line. */
 const PLACE_ERROR_FLOOR = 0.0007;
+/** Error of superimposed positive sequence on a frame whose window already reaches past the clearing, fraction of the line. */
+const MIXED_POSITIVE_ERROR = 0.008;
 
 interface Phasors {
   readonly ends: readonly EndPhasors[];
@@ -47,7 +54,9 @@ interface Phasors {
 /** Never throws on data: what cannot be located yet is "wait". */
 export function locate(disturbance: LineDisturbance): Finding {
   const progress = disturbance.ends.map((end) => progressOf(end.capture, end.disturbedS));
-  const phasors = progress.every((p) => p.restsSince !== undefined) ? settledPhasors(disturbance.ends) : earlyPhasors(disturbance.ends, progress);
+  const phasors = progress.every((p) => p.restsSince !== undefined)
+    ? settledPhasors(disturbance.ends)
+    : earlyPhasors(disturbance.ends, progress);
   if (!phasors) return { kind: "wait" };
   const { ends, timing } = phasors;
   const verdict = judge(ends);
@@ -55,7 +64,11 @@ export function locate(disturbance: LineDisturbance): Finding {
   if (verdict.kind === "no fault") return { kind: "elsewhere", reason: verdict.reason, onsetS };
   if (verdict.kind === "behind") {
     const terminal = disturbance.line.terminals[verdict.endIndex]!;
-    return { kind: "elsewhere", reason: `behind ${disturbance.stationName(terminal.stationId)}, seen from ${disturbance.line.name}`, onsetS };
+    return {
+      kind: "elsewhere",
+      reason: `behind ${disturbance.stationName(terminal.stationId)}, seen from ${disturbance.line.name}`,
+      onsetS,
+    };
   }
   const location = locationOf(disturbance, phasors);
   if (!location) return { kind: "wait" };
@@ -81,22 +94,28 @@ function settledPhasors(ends: readonly CapturedEnd[]): Phasors | undefined {
   return { ends: phasors, timing, residual, isMixed: false };
 }
 
-const steps = (from: number, to: number, by: number): number[] => Array.from({ length: Math.max(1, Math.floor((to - from) / by + 1)) }, (_, k) => from + k * by);
+const steps = (from: number, to: number, by: number): number[] =>
+  Array.from({ length: Math.max(1, Math.floor((to - from) / by + 1)) }, (_, k) => from + k * by);
 
 /** Excursion over its peak at which a frame is "deep in the fault", and change over peak at which two frames are alike. */
 const DEEP = 0.8;
 const ALIKE = 0.05;
 
 /**
- * Before the clearing is known. A unit with a short window shows a plateau: its frames lie wholly in the fault. Units with the same longer window
- * are compared on the deepest common frame.
+ * Before the clearing is known. A unit with a short window shows a plateau: its frames lie wholly in the fault (the first disturbed stamp can lie half a
+ * window before the onset, so two halves after it is the earliest). Units with the same longer window are compared on the deepest common frame.
  */
 function earlyPhasors(ends: readonly CapturedEnd[], progress: readonly Progress[]): Phasors | undefined {
   const plateaus = ends.flatMap((end, e) => {
     const { capture, window } = end;
     const { excursionAmp, changeAmp, peakAmp } = progress[e]!;
-    const n = [...capture.timesS.keys()].find((k) => capture.timesS[k]! >= end.disturbedS && excursionAmp[k]! > DEEP * peakAmp && changeAmp[k]! < ALIKE * peakAmp);
-    if (n === undefined || capture.timesS[n]! < end.disturbedS + window.halfS) return [];
+    const n = [...capture.timesS.keys()].find(
+      (k) =>
+        capture.timesS[k]! >= end.disturbedS + 2 * window.halfS &&
+        excursionAmp[k]! > DEEP * peakAmp &&
+        changeAmp[k]! < ALIKE * peakAmp,
+    );
+    if (n === undefined) return [];
     const at = capture.timesS[n]!;
     const timing = { onsetS: at - window.halfS - 1e-6, clearingS: at + window.halfS + 1e-6 };
     const phasors = wholeWindowPhasors(capture, window, timing);
@@ -110,8 +129,10 @@ function earlyPhasors(ends: readonly CapturedEnd[], progress: readonly Progress[
   if (!a || !b || a.window.origin !== b.window.origin) return undefined;
   const deepest = (end: CapturedEnd, p: Progress) => end.capture.timesS[p.excursionAmp.indexOf(p.peakAmp)]!;
   const at = Math.min(deepest(a, progress[0]!), deepest(b, progress[1]!));
-  if (at < Math.max(a.disturbedS, b.disturbedS) + a.window.halfS) return undefined;
-  const phasors = [mixedFrame(a.capture, a.window, a.disturbedS, at), mixedFrame(b.capture, b.window, b.disturbedS, at)].filter((x) => x !== undefined);
+  if (at < Math.max(a.disturbedS, b.disturbedS) + a.window.halfS / 2) return undefined;
+  const phasors = [mixedFrame(a.capture, a.window, a.disturbedS, at), mixedFrame(b.capture, b.window, b.disturbedS, at)].filter(
+    (x) => x !== undefined,
+  );
   if (phasors.length < 2) return undefined;
   const onsetS = Math.min(a.disturbedS, b.disturbedS) + a.window.halfS / 2;
   return { ends: phasors, timing: { onsetS, clearingS: Number.POSITIVE_INFINITY }, residual: undefined, isMixed: true };
@@ -121,9 +142,12 @@ function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Pha
   const { line } = x;
   const { type, marginDegrees } = selectPhases(faultCurrents(ends));
   const all = gatherEvidence(line, type, ends);
-  // Mixing spoils what one end says, not what two ends with the same window say.
-  const evidence = isMixed ? { ...all, answers: all.answers.map((a) => (a.ends.length < 2 ? { ...a, isOnlyShown: true } : a)) } : all;
-  const extraSd = Math.hypot(PLACE_ERROR_FLOOR, PLACE_ERROR_OF_RESIDUAL * (residual ?? 0));
+  const evidence = isMixed ? mixedEvidence(all) : all;
+  const extraSd = Math.hypot(
+    PLACE_ERROR_FLOOR,
+    PLACE_ERROR_OF_RESIDUAL * (residual ?? 0),
+    isMixed && type === "ABC" ? MIXED_POSITIVE_ERROR : 0,
+  );
   const stationOf = (e: number) => ends[e]!.terminal.stationId;
   const combined = combine(
     line,
@@ -163,7 +187,25 @@ function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Pha
   };
 }
 
-const hull = ({ pieces }: Combined): readonly [number, number] => [Math.min(...pieces.map((p) => p.lowKm)), Math.max(...pieces.map((p) => p.highKm))];
+/**
+ * Mixing spoils what one end says, not what two ends with the same window say of negative sequence, which is nought before and after. Superimposed
+ * positive sequence is not nought after the clearing, and serves only where there is nothing else. Of resistance a mixed frame says nothing.
+ */
+function mixedEvidence({ answers, draws }: Evidence): Evidence {
+  const hasNegative = answers.some((a) => a.method === NEGATIVE_TWO_ENDED);
+  return {
+    draws,
+    answers: answers.map(({ resistanceOhm: _, ...a }) => ({
+      ...a,
+      isOnlyShown: a.ends.length < 2 || (hasNegative && a.method !== NEGATIVE_TWO_ENDED),
+    })),
+  };
+}
+
+const hull = ({ pieces }: Combined): readonly [number, number] => [
+  Math.min(...pieces.map((p) => p.lowKm)),
+  Math.max(...pieces.map((p) => p.highKm)),
+];
 
 /** Of the answer that counts most and knows one. */
 function resistanceOf({ estimates }: Combined): number | null {

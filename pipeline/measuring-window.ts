@@ -39,7 +39,10 @@ export function makeWindow(taps: Float64Array, stepS: number, origin: string): M
 export function referenceWindow(pmuClass: PmuClass, nominalHz: 50 | 60, reportingRateHz: number): MeasuringWindow {
   const fs = SAMPLES_PER_CYCLE * nominalHz;
   if (pmuClass === "P") {
-    const taps = Float64Array.from({ length: P_CLASS_ORDER + 1 }, (_, i) => 1 - (2 * Math.abs(i - P_CLASS_ORDER / 2)) / (P_CLASS_ORDER + 2));
+    const taps = Float64Array.from(
+      { length: P_CLASS_ORDER + 1 },
+      (_, i) => 1 - (2 * Math.abs(i - P_CLASS_ORDER / 2)) / (P_CLASS_ORDER + 2),
+    );
     return makeWindow(taps, 1 / fs, "P class reference");
   }
   const table = M_CLASS[nominalHz];
@@ -53,7 +56,8 @@ export function referenceWindow(pmuClass: PmuClass, nominalHz: 50 | 60, reportin
     const x = (2 * Math.PI * f * k) / fs;
     return (k === 0 ? 1 : Math.sin(x) / x) * (0.54 + 0.46 * Math.cos((2 * Math.PI * k) / order));
   });
-  const origin = rate === reportingRateHz ? `M class reference at ${rate} frames/s` : `M class reference, nearest rate ${rate} frames/s`;
+  const origin =
+    rate === reportingRateHz ? `M class reference at ${rate} frames/s` : `M class reference, nearest rate ${rate} frames/s`;
   return makeWindow(taps, 1 / fs, origin);
 }
 

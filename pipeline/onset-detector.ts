@@ -83,10 +83,14 @@ export class OnsetDetector {
     for (let s = 0; s < 3; s++) {
       const re = this.#history[past + 2 * s]!;
       const im = this.#history[past + 2 * s + 1]!;
-      const jump = Math.hypot(this.#history[here + 2 * s]! - (re * cos - im * sin), this.#history[here + 2 * s + 1]! - (re * sin + im * cos));
+      const jump = Math.hypot(
+        this.#history[here + 2 * s]! - (re * cos - im * sin),
+        this.#history[here + 2 * s + 1]! - (re * sin + im * cos),
+      );
       const noise = this.#noise[s]!;
       if (jump > NOISE_MULTIPLE * noise && jump > FLOOR_SHARE * positive + FLOOR_AMP) exceeds = true;
-      else if (!this.#isDisturbed) this.#noise[s] = noise === 0 ? jump : noise * (jump > noise ? 1 + MEDIAN_STEP : 1 - MEDIAN_STEP);
+      else if (!this.#isDisturbed)
+        this.#noise[s] = noise === 0 ? jump : noise * (jump > noise ? 1 + MEDIAN_STEP : 1 - MEDIAN_STEP);
       if (jump > largest) largest = jump;
       if (Number.isNaN(jump)) return undefined;
     }

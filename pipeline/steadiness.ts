@@ -53,7 +53,10 @@ function distance(phasors: Float64Array, n: number, k: number, turnRad: number):
     const im = phasors[k * NUMBERS_PER_ROW + c + 1]!;
     largest = Math.max(
       largest,
-      Math.hypot(phasors[n * NUMBERS_PER_ROW + c]! - (re * cos - im * sin), phasors[n * NUMBERS_PER_ROW + c + 1]! - (re * sin + im * cos)),
+      Math.hypot(
+        phasors[n * NUMBERS_PER_ROW + c]! - (re * cos - im * sin),
+        phasors[n * NUMBERS_PER_ROW + c + 1]! - (re * sin + im * cos),
+      ),
     );
   }
   return largest;

@@ -7,7 +7,7 @@
  * minus the frequency, the fault state a decaying offset. Breakers open pole by pole and end by end, so the clearing is a profile: short
  * intervals after the first opening, each a state of its own, held to its neighbours by a weak ridge.
  */
-import { complex, type Complex } from "./complex.ts";
+import { type Complex, complex } from "./complex.ts";
 import { type LeastSquares, reduce, solveReduced } from "./least-squares.ts";
 import { addKernelUpTo, type Kernel, kernelOf, type MeasuringWindow } from "./measuring-window.ts";
 
@@ -133,7 +133,12 @@ interface Workspace {
 const makeWorkspace = (): Workspace => ({ a: new Float64Array(0), b: new Float64Array(0) });
 
 /** Fills and reduces one end's system. Returns the summed squared residual (channel scales), ridge rows included. */
-function fitEnd(end: PreparedEnd, timing: Timing, model: ClearingModel, work: Workspace): { cost: number; rows: number; columns: number } {
+function fitEnd(
+  end: PreparedEnd,
+  timing: Timing,
+  model: ClearingModel,
+  work: Workspace,
+): { cost: number; rows: number; columns: number } {
   const columns = unknowns(timing, model);
   const isCleared = columns > 5;
   const ridgeRows = isCleared && model.ridge > 0 ? 2 * (model.intervals + 1) : 0;
@@ -151,7 +156,8 @@ function fitEnd(end: PreparedEnd, timing: Timing, model: ClearingModel, work: Wo
     const bottom = top + columns;
     for (let s = 0; s < states; s++) {
       const start = s === 0 ? Number.NEGATIVE_INFINITY : s === 1 ? timing.onsetS : timing.clearingS + (s - 2) * model.intervalS;
-      const stop = s === 0 ? timing.onsetS : s === states - 1 ? Number.POSITIVE_INFINITY : timing.clearingS + (s - 1) * model.intervalS;
+      const stop =
+        s === 0 ? timing.onsetS : s === states - 1 ? Number.POSITIVE_INFINITY : timing.clearingS + (s - 1) * model.intervalS;
       if (start > t + end.window.halfS || stop < t - end.window.halfS) continue;
       const col = s < 2 ? 2 * s : 2 * s + 1;
       show(end, end.direct, 0, n, start, stop);
@@ -228,7 +234,12 @@ export interface TimingFit {
  * simplex search (Nelder & Mead 1965) with the profile.
  * @param durations  s; Infinity among them stands for "still on"
  */
-export function fitTiming(ends: readonly PreparedEnd[], onsets: readonly number[], durations: readonly number[], model: ClearingModel): TimingFit {
+export function fitTiming(
+  ends: readonly PreparedEnd[],
+  onsets: readonly number[],
+  durations: readonly number[],
+  model: ClearingModel,
+): TimingFit {
   const work = makeWorkspace();
   const cost = (timing: Timing, how: ClearingModel): number => {
     let total = 0;
@@ -261,12 +272,16 @@ export function fitTiming(ends: readonly PreparedEnd[], onsets: readonly number[
 
 /** Nelder & Mead's simplex in one or two dimensions; ends when the corners lie within 5 µs of each other. */
 function minimise(f: (p: readonly number[]) => number, start: readonly number[], step: readonly number[]) {
-  const corners = [start, ...start.map((_, k) => start.map((x, i) => (i === k ? x + step[k]! : x)))].map((at) => ({ at, cost: f(at) }));
+  const corners = [start, ...start.map((_, k) => start.map((x, i) => (i === k ? x + step[k]! : x)))].map((at) => ({
+    at,
+    cost: f(at),
+  }));
   const n = start.length;
   for (let turn = 0; turn < 120; turn++) {
     corners.sort((p, q) => p.cost - q.cost);
     const [first, last] = [corners[0]!, corners[n]!];
-    if (corners.every((c) => c.at.every((x, i) => Math.abs(x - first.at[i]!) < 5e-6))) return { ...first, stoppedBy: "converged" as const };
+    if (corners.every((c) => c.at.every((x, i) => Math.abs(x - first.at[i]!) < 5e-6)))
+      return { ...first, stoppedBy: "converged" as const };
     const centre = start.map((_, i) => corners.slice(0, n).reduce((s, c) => s + c.at[i]!, 0) / n);
     const along = (k: number) => {
       const at = centre.map((x, i) => x + k * (x - last.at[i]!));

@@ -1,4 +1,17 @@
-import { concat, connect, defer, EMPTY, endWith, ignoreElements, interval, merge, mergeMap, type OperatorFunction, type SchedulerLike, takeUntil } from "rxjs";
+import {
+  concat,
+  connect,
+  defer,
+  EMPTY,
+  endWith,
+  ignoreElements,
+  interval,
+  merge,
+  mergeMap,
+  type OperatorFunction,
+  type SchedulerLike,
+  takeUntil,
+} from "rxjs";
 import type { Network } from "../config/index.ts";
 import type { FrameBlock } from "../ingest/types.ts";
 import { DisturbanceTracker, type TrackerProblem } from "./disturbance-tracker.ts";
@@ -18,13 +31,23 @@ const FEED_DELAY_MS = 2_000;
  * Blocks of frames in, disturbances out. Holds the detectors' state, the captures of open disturbances and, with a clock, one timer. Ends with the
  * source, after settling what is open; drops nothing.
  */
-export function watchDisturbances(network: Network, { clock, onProblem }: WatchOptions = {}): OperatorFunction<FrameBlock, DisturbanceEvent> {
+export function watchDisturbances(
+  network: Network,
+  { clock, onProblem }: WatchOptions = {},
+): OperatorFunction<FrameBlock, DisturbanceEvent> {
   return (source) =>
     defer(() => {
       const tracker = new DisturbanceTracker(network, onProblem);
-      const ticks = clock ? interval(TICK_MS, clock).pipe(mergeMap(() => tracker.tick((clock.now() - FEED_DELAY_MS) * 1000))) : EMPTY;
+      const ticks = clock
+        ? interval(TICK_MS, clock).pipe(mergeMap(() => tracker.tick((clock.now() - FEED_DELAY_MS) * 1000)))
+        : EMPTY;
       const live = source.pipe(
-        connect((blocks) => merge(blocks.pipe(mergeMap((block) => tracker.step(block))), ticks.pipe(takeUntil(blocks.pipe(ignoreElements(), endWith(true)))))),
+        connect((blocks) =>
+          merge(
+            blocks.pipe(mergeMap((block) => tracker.step(block))),
+            ticks.pipe(takeUntil(blocks.pipe(ignoreElements(), endWith(true)))),
+          ),
+        ),
       );
       return concat(
         live,

@@ -29,7 +29,12 @@ export interface EndSequences {
 }
 
 /** Voltage at fraction m of the line as seen from this end, each sequence along its own line. */
-export function sequencesAlong(lines: { readonly line1: SequenceLine; readonly line0: SequenceLine }, v: Sequence, i: Sequence, m: number) {
+export function sequencesAlong(
+  lines: { readonly line1: SequenceLine; readonly line0: SequenceLine },
+  v: Sequence,
+  i: Sequence,
+  m: number,
+) {
   const zero = along(lines.line0, { v: v.zero, i: i.zero }, m);
   const positive = along(lines.line1, { v: v.positive, i: i.positive }, m);
   const negative = along(lines.line1, { v: v.negative, i: i.negative }, m);

@@ -23,7 +23,13 @@ export interface Course {
 }
 
 /** A ring that a test fills. */
-export function plainRing(feedId: string, idCode: number, rateHz: number, nominalHz: 50 | 60, capacity = 512): FrameRing & { put(timeUs: number, phasors: readonly C[]): number } {
+export function plainRing(
+  feedId: string,
+  idCode: number,
+  rateHz: number,
+  nominalHz: 50 | 60,
+  capacity = 512,
+): FrameRing & { put(timeUs: number, phasors: readonly C[]): number } {
   const periodUs = 1e6 / rateHz;
   const slots = new Float64Array(capacity).fill(-1);
   let newest = -1;
@@ -68,7 +74,12 @@ export function plainRing(feedId: string, idCode: number, rateHz: number, nomina
 }
 
 /** Blocks of one frame each, of both ends, in time order. `ends` in the order of the line's terminals; undefined where none is measured. */
-export function blocksOf(network: Network, ends: readonly (EndPhasorSet | undefined)[], course: Course, seed = 7): FrameBlock[] {
+export function* blocksOf(
+  network: Network,
+  ends: readonly (EndPhasorSet | undefined)[],
+  course: Course,
+  seed = 7,
+): Generator<FrameBlock> {
   const normal = normalDeviates(seed);
   const line = network.lines[0]!;
   const w = 2 * Math.PI * network.frequencyHz;
@@ -117,6 +128,6 @@ export function blocksOf(network: Network, ends: readonly (EndPhasorSet | undefi
       });
     }
   });
-  // Each block must be made when it is its turn: the ring holds what has come so far.
-  return out.sort((p, q) => p.timeUs - q.timeUs).map((x) => ({ get now() { return x.block(); } }).now);
+  // Each block is made when it is its turn: the ring holds what has come so far.
+  for (const { block } of out.sort((p, q) => p.timeUs - q.timeUs)) yield block();
 }

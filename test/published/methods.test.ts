@@ -4,7 +4,7 @@
  * network's distribution factors turned by up to 4 degrees, under 0.5 % of the line up to 5 ohm, under 2 % at 25 ohm.
  */
 import { describe, expect, it } from "vitest";
-import { superimposedLoopCurrent, loopCurrent, loopVoltage } from "../../pipeline/fault-loop.ts";
+import { loopCurrent, loopVoltage, superimposedLoopCurrent } from "../../pipeline/fault-loop.ts";
 import { sequenceLine } from "../../pipeline/long-line.ts";
 import { simpleReactance } from "../../pipeline/methods/reactance.ts";
 import { difference, takagi, takagiLongLine } from "../../pipeline/methods/takagi.ts";
@@ -43,10 +43,18 @@ for (const type of faultTypes) {
           expect(Math.abs(textbook - m)).toBeLessThan(ohm > 5 ? 0.02 : 0.005);
           // With no capacitance the long-line condition is the textbook's.
           expect(takagiLongLine(type, sa, lines)).toBeCloseTo(textbook, 6);
-          const positive = twoEndedSynchronised(lines.line1, { v: sa.deltaV.positive, i: sa.deltaI.positive }, { v: sb.deltaV.positive, i: sb.deltaI.positive });
+          const positive = twoEndedSynchronised(
+            lines.line1,
+            { v: sa.deltaV.positive, i: sa.deltaI.positive },
+            { v: sb.deltaV.positive, i: sb.deltaI.positive },
+          );
           expect(Math.abs(positive.re - m)).toBeLessThan(1e-4);
           if (type !== "ABC") {
-            const negative = twoEndedSynchronised(lines.line1, { v: sa.v.negative, i: sa.i.negative }, { v: sb.v.negative, i: sb.i.negative });
+            const negative = twoEndedSynchronised(
+              lines.line1,
+              { v: sa.v.negative, i: sa.i.negative },
+              { v: sb.v.negative, i: sb.i.negative },
+            );
             expect(Math.abs(negative.re - m)).toBeLessThan(1e-4);
           }
           if (ohm < 1) expect(Math.abs(simpleReactance(loopV, loopI, network.z1) - m)).toBeLessThan(0.02);

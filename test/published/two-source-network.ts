@@ -74,7 +74,10 @@ export function solve(n: TwoSource): { a: EndPhasorSet; b: EndPhasorSet } {
     // Work in the rotated reference, then rename the phases back.
     const I = toAbc(j0, plus(rotated(preI, n.type), j1), j2);
     const V = toAbc(by(times(s0, j0), -1), minus(rotated(preV, n.type), times(s1, j1)), by(times(s1, j2), -1));
-    return { pre: [...toAbc(c(0), preV, c(0)), ...toAbc(c(0), preI, c(0))], fault: [...renamed(V, n.type), ...renamed(I, n.type)] };
+    return {
+      pre: [...toAbc(c(0), preV, c(0)), ...toAbc(c(0), preI, c(0))],
+      fault: [...renamed(V, n.type), ...renamed(I, n.type)],
+    };
   };
   return {
     a: end(n.eA, n.sA1, n.sA0, over(far1, plus(near1, far1)), over(far0, plus(near0, far0)), 1),
