@@ -8,6 +8,7 @@ import { flagOf } from "./flag.ts";
 import { mixedFrame, unmixedPhasors, wholeWindowPhasors } from "./frame-choice.ts";
 import type { MeasuringWindow } from "./measuring-window.ts";
 import { selectPhases } from "./phase-selection.ts";
+import { roughTiming } from "./rough-timing.ts";
 import { type Progress, progressOf } from "./steadiness.ts";
 import type { LocateStage, Location } from "./types.ts";
 import { fitTiming, PROFILE, prepareEnd, type Timing } from "./unmix.ts";
@@ -43,6 +44,10 @@ const PLACE_ERROR_OF_RESIDUAL = 0.3;
 const PLACE_ERROR_FLOOR = 0.0007;
 /** Error of superimposed positive sequence on a frame whose window already reaches past the clearing, fraction of the line. */
 const MIXED_POSITIVE_ERROR = 0.008;
+
+/** Spacing of the first look for onset and clearing, and how long a fault it covers; longer ones have frames with their whole window inside. */
+const GRID_S = 0.004;
+const LONGEST_SHORT_FAULT_S = 0.3;
 
 interface Phasors {
   readonly ends: readonly EndPhasors[];
@@ -80,9 +85,9 @@ function settledPhasors(ends: readonly CapturedEnd[]): Phasors | undefined {
   const prepared = ends.map(({ capture, window }) => prepareEnd({ ...capture, window }, PROFILE.offsetS));
   const earliest = Math.min(...ends.map((e) => e.disturbedS - e.capture.periodS));
   const latest = Math.min(...ends.map((e) => e.disturbedS + e.window.halfS + 2 * e.capture.periodS));
-  const onsets = steps(earliest, latest, 0.004);
-  const durations = [...steps(0.02, 0.3, 0.01), Number.POSITIVE_INFINITY];
-  const { timing } = fitTiming(prepared, onsets, durations, PROFILE);
+  const grid = steps(earliest, latest + LONGEST_SHORT_FAULT_S, GRID_S);
+  const start = roughTiming(prepared, grid, steps(earliest, latest, GRID_S).length - 1);
+  const { timing } = fitTiming(prepared, start, PROFILE);
   let residual: number | undefined;
   const phasors = ends.map(({ capture, window }): EndPhasors => {
     const whole = wholeWindowPhasors(capture, window, timing);

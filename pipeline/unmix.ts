@@ -43,8 +43,6 @@ export interface ClearingModel {
 
 /** Five states, 3 ms apart: 12 ms covers poles at successive current zeros and ends some milliseconds apart. */
 export const PROFILE: ClearingModel = { intervals: 4, intervalS: 0.003, ridge: 0.02, offsetS: 0.04 };
-/** One instant; enough to find roughly where onset and clearing lie. */
-export const INSTANT: ClearingModel = { intervals: 0, intervalS: 0, ridge: 0, offsetS: 0.04 };
 
 export interface States {
   /** VA VB VC IA IB IC, at the epoch's phase reference. */
@@ -230,41 +228,23 @@ export interface TimingFit {
 }
 
 /**
- * Onset and clearing that explain all ends' frames best: a coarse look over `onsets` × `durations` with the clearing as one instant, then a
- * simplex search (Nelder & Mead 1965) with the profile.
- * @param durations  s; Infinity among them stands for "still on"
+ * Onset and clearing that explain all ends' frames best: a simplex search (Nelder & Mead 1965) from a start good to some milliseconds.
+ * @param start  clearing Infinity: the fault is taken to last, and only the onset is sought
  */
-export function fitTiming(
-  ends: readonly PreparedEnd[],
-  onsets: readonly number[],
-  durations: readonly number[],
-  model: ClearingModel,
-): TimingFit {
+export function fitTiming(ends: readonly PreparedEnd[], start: Timing, model: ClearingModel): TimingFit {
   const work = makeWorkspace();
-  const cost = (timing: Timing, how: ClearingModel): number => {
+  const cost = (timing: Timing): number => {
     let total = 0;
-    for (const end of ends) total += fitEnd(end, timing, how, work).cost;
+    for (const end of ends) total += fitEnd(end, timing, model, work).cost;
     return total;
   };
-  let best: Timing = { onsetS: onsets[0]!, clearingS: onsets[0]! + durations[0]! };
-  let least = Number.POSITIVE_INFINITY;
-  for (const onsetS of onsets) {
-    for (const duration of durations) {
-      const timing = { onsetS, clearingS: onsetS + duration };
-      const c = cost(timing, INSTANT);
-      if (c < least) {
-        least = c;
-        best = timing;
-      }
-    }
-  }
-  if (best.clearingS === Number.POSITIVE_INFINITY) {
-    const line = minimise((p) => cost({ onsetS: p[0]!, clearingS: Number.POSITIVE_INFINITY }, model), [best.onsetS], [0.0015]);
+  if (start.clearingS === Number.POSITIVE_INFINITY) {
+    const line = minimise((p) => cost({ onsetS: p[0]!, clearingS: Number.POSITIVE_INFINITY }), [start.onsetS], [0.0015]);
     return { timing: { onsetS: line.at[0]!, clearingS: Number.POSITIVE_INFINITY }, cost: line.cost, stoppedBy: line.stoppedBy };
   }
   const plane = minimise(
-    (p) => (p[1]! <= p[0]! + 0.005 ? Number.POSITIVE_INFINITY : cost({ onsetS: p[0]!, clearingS: p[1]! }, model)),
-    [best.onsetS, best.clearingS],
+    (p) => (p[1]! <= p[0]! + 0.005 ? Number.POSITIVE_INFINITY : cost({ onsetS: p[0]!, clearingS: p[1]! })),
+    [start.onsetS, start.clearingS],
     [0.0015, -0.003],
   );
   return { timing: { onsetS: plane.at[0]!, clearingS: plane.at[1]! }, cost: plane.cost, stoppedBy: plane.stoppedBy };
