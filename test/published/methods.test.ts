@@ -6,9 +6,11 @@
 import { describe, expect, it } from "vitest";
 import { loopCurrent, loopVoltage, superimposedLoopCurrent } from "../../pipeline/fault-loop.ts";
 import { sequenceLine } from "../../pipeline/long-line.ts";
+import { eriksson } from "../../pipeline/methods/eriksson.ts";
 import { simpleReactance } from "../../pipeline/methods/reactance.ts";
 import { difference, takagi, takagiLongLine } from "../../pipeline/methods/takagi.ts";
 import { twoEndedSynchronised } from "../../pipeline/methods/two-ended.ts";
+import { leadOfFaultCurrent, wiszniewski } from "../../pipeline/methods/wiszniewski.ts";
 import { selectPhases } from "../../pipeline/phase-selection.ts";
 import { type Abc, toSequence } from "../../pipeline/sequence.ts";
 import { faultTypes } from "../../pipeline/types.ts";
@@ -58,6 +60,16 @@ for (const type of faultTypes) {
             expect(Math.abs(negative.re - m)).toBeLessThan(1e-4);
           }
           if (ohm < 1) expect(Math.abs(simpleReactance(loopV, loopI, network.z1) - m)).toBeLessThan(0.02);
+        });
+
+        it(`is placed within 0.01 % when the sources are known (Eriksson; Wiszniewski with its angle): m ${m}, ${ohm} ohm`, () => {
+          const loopV = loopVoltage(type, v(a.fault));
+          const loopI = loopCurrent(type, i(a.fault), k0);
+          const delta = superimposedLoopCurrent(type, sa.deltaI);
+          const answer = eriksson(loopV, loopI, delta, network.z1, network.sA1, network.sB1);
+          expect(Math.abs(answer!.m - m)).toBeLessThan(1e-4);
+          const angle = -leadOfFaultCurrent(m, network.z1, network.sA1, network.sB1);
+          expect(Math.abs(wiszniewski(loopV, loopI, delta, network.z1, angle) - m)).toBeLessThan(1e-4);
         });
 
         it(`is named from both ends' currents and from one end's: m ${m}, ${ohm} ohm`, () => {
