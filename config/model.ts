@@ -95,7 +95,10 @@ export interface Line {
   readonly constants: LineConstants;
   /** In order; two for an ordinary line. */
   readonly terminals: readonly Terminal[];
-  readonly parallel?: { readonly lineId: string; /** Zero-sequence mutual impedance of the whole length [ohm]. */ readonly z0m: Complex };
+  readonly parallel?: {
+    readonly lineId: string /** Zero-sequence mutual impedance of the whole length [ohm]. */;
+    readonly z0m: Complex;
+  };
   readonly seriesCapacitor?: {
     readonly atKm: number;
     readonly reactanceOhm: number;

@@ -1,0 +1,111 @@
+/**
+ * Cuts a byte stream into frames. Order of trust: sync, size within bounds, whole frame here, CRC; only then is anything in it looked at. After a bad
+ * CRC the search goes on one byte further, not by the claimed size: the size may be what is broken.
+ */
+import { crcCcitt } from "./checksum.ts";
+import { LARGEST_FRAME_BYTES, SMALLEST_FRAME_BYTES, SYNC_BYTE, typeOf } from "./common-header.ts";
+import type { FrameDefect } from "./defects.ts";
+
+/** What one look at the front of the bytes can say. Needing more is an answer, not an error. */
+export type Look =
+  | { readonly kind: "frame"; readonly bytes: number }
+  | { readonly kind: "wait"; readonly bytes: number }
+  | { readonly kind: "defect"; readonly code: FrameDefect; readonly skipBytes: number };
+
+/** @param largest  frames above this are a false start: from the configuration, so that one cannot hold the queue for long */
+export function lookAt(bytes: Uint8Array, at: number, end: number, largest: number): Look {
+  if (bytes[at] !== SYNC_BYTE) {
+    let skip = 1;
+    while (at + skip < end && bytes[at + skip] !== SYNC_BYTE) skip++;
+    return { kind: "defect", code: "no-sync", skipBytes: skip };
+  }
+  if (end - at < 4) return { kind: "wait", bytes: 4 };
+  if (typeOf(bytes[at + 1]!) === undefined) return { kind: "defect", code: "unknown-frame-type", skipBytes: 1 };
+  const size = (bytes[at + 2]! << 8) | bytes[at + 3]!;
+  if (size < SMALLEST_FRAME_BYTES || size > largest) return { kind: "defect", code: "size-out-of-bounds", skipBytes: 1 };
+  if (end - at < size) return { kind: "wait", bytes: size };
+  const stated = (bytes[at + size - 2]! << 8) | bytes[at + size - 1]!;
+  if (crcCcitt(bytes, at, at + size - 2) !== stated) return { kind: "defect", code: "bad-crc", skipBytes: 1 };
+  return { kind: "frame", bytes: size };
+}
+
+export interface FramerSink {
+  /** A whole frame with a good CRC at `bytes[at..at+size)`; valid during the call only. */
+  frame(bytes: Uint8Array, at: number, size: number): void;
+  /** @param offset  in the stream since its start */
+  defect(code: FrameDefect, offset: number, skippedBytes: number): void;
+}
+
+/**
+ * Feeds on chunks as a socket gives them. Holds at most one frame's worth of unfinished bytes; a frame that lies whole in a chunk is looked at in place.
+ */
+export class Framer {
+  readonly #sink: FramerSink;
+  #rest = new Uint8Array(0);
+  #restLength = 0;
+  #offset = 0;
+  /** Size bound; lowered once the configuration is known. */
+  largestFrameBytes = LARGEST_FRAME_BYTES;
+
+  constructor(sink: FramerSink) {
+    this.#sink = sink;
+  }
+
+  push(chunk: Uint8Array): void {
+    let used = 0;
+    while (this.#restLength > 0) {
+      // Bring over only what the unfinished frame still lacks, and look again.
+      const look = lookAt(this.#rest, 0, this.#restLength, this.largestFrameBytes);
+      if (look.kind !== "wait") {
+        this.#act(look, this.#rest, 0);
+        this.#drop(look.kind === "frame" ? look.bytes : look.skipBytes);
+        continue;
+      }
+      const lacking = Math.min(look.bytes - this.#restLength, chunk.length - used);
+      if (lacking === 0) return;
+      this.#append(chunk.subarray(used, used + lacking));
+      used += lacking;
+    }
+    while (used < chunk.length) {
+      const look = lookAt(chunk, used, chunk.length, this.largestFrameBytes);
+      if (look.kind === "wait") {
+        this.#append(chunk.subarray(used));
+        return;
+      }
+      this.#act(look, chunk, used);
+      used += look.kind === "frame" ? look.bytes : look.skipBytes;
+    }
+  }
+
+  /** The stream ended: what is left is a frame cut short. */
+  end(): void {
+    if (this.#restLength > 0) this.#sink.defect("truncated", this.#offset, this.#restLength);
+    this.#restLength = 0;
+  }
+
+  #act(look: Exclude<Look, { kind: "wait" }>, bytes: Uint8Array, at: number): void {
+    if (look.kind === "frame") {
+      this.#sink.frame(bytes, at, look.bytes);
+      this.#offset += look.bytes;
+    } else {
+      this.#sink.defect(look.code, this.#offset, look.skipBytes);
+      this.#offset += look.skipBytes;
+    }
+  }
+
+  #append(piece: Uint8Array): void {
+    const length = this.#restLength + piece.length;
+    if (this.#rest.length < length) {
+      const larger = new Uint8Array(Math.max(length, 2 * this.#rest.length, 256));
+      larger.set(this.#rest.subarray(0, this.#restLength));
+      this.#rest = larger;
+    }
+    this.#rest.set(piece, this.#restLength);
+    this.#restLength = length;
+  }
+
+  #drop(bytes: number): void {
+    this.#rest.copyWithin(0, bytes, this.#restLength);
+    this.#restLength -= bytes;
+  }
+}

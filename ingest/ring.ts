@@ -1,0 +1,87 @@
+/** The rows of one stream: see `FrameRing` for what readers see. */
+import type { DataPlan, StreamConfig } from "./c37118/index.ts";
+import { decodeRowInto, planOf, timeUsOf } from "./c37118/index.ts";
+import type { FrameRing, PhasorColumn, UnitInfo } from "./types.ts";
+
+/** At least this much is kept, in a power of two of rows. */
+const KEPT_S = 16;
+/** A tag further from the newest than this is believed only when the next frame agrees. */
+const JUMP_US = 10e6;
+
+export type Placement = "new" | "duplicate" | "too-late" | "doubtful-time";
+
+export class WritableRing implements FrameRing {
+  readonly feedId: string;
+  readonly columns: readonly PhasorColumn[];
+  readonly units: readonly UnitInfo[];
+  readonly periodUs: number;
+  readonly capacity: number;
+  readonly timeUs: Float64Array;
+  readonly arrivedUs: Float64Array;
+  readonly phasors: Float64Array;
+  readonly frequencyHz: Float64Array;
+  readonly rocofHzPerS: Float64Array;
+  readonly stat: Uint16Array;
+  readonly plan: DataPlan;
+  newestSlot = -1;
+  /** Slot that the last `put` wrote or found. */
+  lastSlot = -1;
+  readonly #slotOfRow: Float64Array;
+  #doubtfulUs = Number.NaN;
+
+  constructor(feedId: string, config: StreamConfig) {
+    this.feedId = feedId;
+    this.columns = config.units.flatMap((unit) =>
+      unit.phasors.map((phasor, indexInUnit) => ({
+        unitIdCode: unit.idCode,
+        unitName: unit.name,
+        name: phasor.name,
+        kind: phasor.kind,
+        indexInUnit,
+      })),
+    );
+    this.units = config.units.map(({ idCode, name, nominalHz }) => ({ idCode, name, nominalHz }));
+    this.periodUs = 1e6 / config.reportingRateHz;
+    this.capacity = 2 ** Math.ceil(Math.log2(Math.max(64, KEPT_S * config.reportingRateHz)));
+    const rows = this.capacity;
+    this.timeUs = new Float64Array(rows);
+    this.arrivedUs = new Float64Array(rows);
+    this.phasors = new Float64Array(rows * this.columns.length * 2);
+    this.frequencyHz = new Float64Array(rows * this.units.length);
+    this.rocofHzPerS = new Float64Array(rows * this.units.length);
+    this.stat = new Uint16Array(rows * this.units.length);
+    this.#slotOfRow = new Float64Array(rows).fill(-1);
+    this.plan = planOf(config);
+  }
+
+  rowOf(slot: number): number {
+    const row = slot % this.capacity; // slots pass 2³¹: no bit mask
+    return this.#slotOfRow[row] === slot ? row : -1;
+  }
+
+  /** Decodes the frame at `at` into its place. A frame that came twice, or after its row went to a newer one, changes nothing. */
+  put(view: DataView, at: number, arrivedUs: number | undefined): Placement {
+    const timeUs = timeUsOf(view.getUint32(at + 6), view.getUint32(at + 10), this.plan.timeBase);
+    const slot = Math.round(timeUs / this.periodUs);
+    this.lastSlot = slot;
+    if (this.newestSlot >= 0) {
+      const aheadUs = timeUs - this.newestSlot * this.periodUs;
+      if (Math.abs(aheadUs) > Math.max(JUMP_US, 4 * this.periodUs)) {
+        const isAgreed = Math.abs(timeUs - this.#doubtfulUs) <= 2.5 * this.periodUs;
+        this.#doubtfulUs = timeUs;
+        if (!isAgreed) return "doubtful-time";
+        this.#slotOfRow.fill(-1);
+        this.newestSlot = -1;
+      } else if (slot <= this.newestSlot - this.capacity) return "too-late";
+    }
+    this.#doubtfulUs = Number.NaN;
+    const row = slot % this.capacity;
+    if (this.#slotOfRow[row] === slot) return "duplicate";
+    decodeRowInto(this, row, this.plan, view, at);
+    this.timeUs[row] = timeUs;
+    this.arrivedUs[row] = arrivedUs ?? timeUs;
+    this.#slotOfRow[row] = slot;
+    if (slot > this.newestSlot) this.newestSlot = slot;
+    return "new";
+  }
+}

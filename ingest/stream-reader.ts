@@ -1,0 +1,156 @@
+/**
+ * From a feed's bytes to rows: cuts frames, checks IDCODE and configuration, fills the ring, counts every defect. Knows no socket and no file: TCP feeds
+ * and replayed recordings use the same reader.
+ */
+import { bindTerminal, type FeedConfig, type Network, type Terminal } from "../config/index.ts";
+import {
+  BadConfiguration,
+  dataFrameBytes,
+  decodeConfig,
+  type FrameDefect,
+  Framer,
+  frameDefects,
+  type StreamConfig,
+  typeOf,
+} from "./c37118/index.ts";
+import { WritableRing } from "./ring.ts";
+
+/** A CFG-2 of the same stream may be this large however small its data frames are. */
+const LARGEST_BEFORE_CONFIGURATION = 65_535;
+
+export interface StreamEvents {
+  /** Whole frame as received, for recordings; valid during the call only. */
+  readonly onFrame?: (bytes: Uint8Array, at: number, size: number) => void;
+  /** A usable configuration came, first or changed. */
+  readonly onConfiguration: (config: StreamConfig) => void;
+  /** A row was written. */
+  readonly onRow: (slot: number) => void;
+  /** In words, for the log and the operator. */
+  readonly onDefect: (code: FrameDefect, words: string) => void;
+}
+
+export class StreamReader {
+  readonly feed: FeedConfig;
+  readonly defects: Record<FrameDefect, number> = Object.fromEntries(frameDefects.map((d) => [d, 0])) as Record<
+    FrameDefect,
+    number
+  >;
+  frames = 0;
+  missingFrames = 0;
+  ring: WritableRing | undefined;
+  config: StreamConfig | undefined;
+  readonly #framer: Framer;
+  readonly #events: StreamEvents;
+  #configurationBytes: Buffer | undefined;
+  #arrivedUs: number | undefined;
+  #viewed: { bytes: Uint8Array; view: DataView } | undefined;
+
+  constructor(feed: FeedConfig, events: StreamEvents) {
+    this.feed = feed;
+    this.#events = events;
+    this.#framer = new Framer({
+      frame: (bytes, at, size) => this.#take(bytes, at, size),
+      defect: (code, offset, skipped) =>
+        this.#defect(code, `${skipped} byte${skipped === 1 ? "" : "s"} skipped at byte ${offset} of the stream`),
+    });
+    this.#framer.largestFrameBytes = LARGEST_BEFORE_CONFIGURATION;
+  }
+
+  /** @param arrivedUs  µs since 1970 UTC; left out for recordings, where the tag's time stands for it */
+  push(chunk: Uint8Array, arrivedUs?: number): void {
+    this.#arrivedUs = arrivedUs;
+    this.#viewed = undefined;
+    this.#framer.push(chunk);
+  }
+
+  /** The connection or file ended. */
+  end(): void {
+    this.#framer.end();
+  }
+
+  #defect(code: FrameDefect, words: string): void {
+    this.defects[code]++;
+    this.#events.onDefect(code, words);
+  }
+
+  #take(bytes: Uint8Array, at: number, size: number): void {
+    const type = typeOf(bytes[at + 1]!);
+    const idCode = (bytes[at + 4]! << 8) | bytes[at + 5]!;
+    if (idCode !== this.feed.idCode) {
+      this.#defect(
+        "wrong-id-code",
+        `expected IDCODE ${this.feed.idCode}, found ${idCode}: check the feed's idCode in the network file`,
+      );
+      return;
+    }
+    if (type === "data") {
+      if (!this.#takeData(bytes, at, size)) return;
+    } else if (type === "configuration-2" && !this.#takeConfiguration(bytes, at, size)) return;
+    this.#events.onFrame?.(bytes, at, size);
+  }
+
+  #takeConfiguration(bytes: Uint8Array, at: number, size: number): boolean {
+    // The frame's own time and CRC differ each time it is sent; what it says is between them.
+    const said = Buffer.from(bytes.subarray(at + 14, at + size - 2));
+    if (this.#configurationBytes?.equals(said)) return true;
+    try {
+      this.config = decodeConfig(bytes, at, size);
+    } catch (error) {
+      if (!(error instanceof BadConfiguration)) throw error;
+      this.#defect("bad-configuration", `configuration frame cannot be used: ${error.message}`);
+      return false;
+    }
+    this.#configurationBytes = said;
+    this.ring = new WritableRing(this.feed.id, this.config);
+    this.#framer.largestFrameBytes = Math.max(dataFrameBytes(this.config), 2 * size, 1024);
+    this.#events.onConfiguration(this.config);
+    return true;
+  }
+
+  #takeData(bytes: Uint8Array, at: number, size: number): boolean {
+    const { ring } = this;
+    if (!ring) {
+      this.#defect("no-configuration-yet", "data frame before the first configuration frame");
+      return false;
+    }
+    if (size !== ring.plan.frameBytes) {
+      this.#defect("size-unlike-configuration", `data frame of ${size} bytes, the configuration makes ${ring.plan.frameBytes}`);
+      return false;
+    }
+    if (this.#viewed?.bytes !== bytes)
+      this.#viewed = { bytes, view: new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength) };
+    const before = ring.newestSlot;
+    const placement = ring.put(this.#viewed.view, at, this.#arrivedUs);
+    if (placement === "doubtful-time")
+      this.#defect("time-out-of-bounds", `time tag of slot ${ring.lastSlot} is far from the last one`);
+    else if (placement === "duplicate") this.#defect("duplicate", "frame came twice");
+    else if (placement === "too-late") this.#defect("late", "frame came after its row was given to a newer one");
+    if (placement !== "new") return false;
+    this.frames++;
+    if (before >= 0 && ring.newestSlot >= before) {
+      if (ring.lastSlot > before) this.missingFrames += ring.lastSlot - before - 1;
+      else this.missingFrames = Math.max(0, this.missingFrames - 1); // a late one fell into its gap
+    }
+    this.#events.onRow(ring.lastSlot);
+    return true;
+  }
+}
+
+/** In words, which of the feed's terminals do not find their channels in the stream; empty when all do. */
+export function bindingProblems(
+  network: Network,
+  feedId: string,
+  config: StreamConfig,
+): { readonly problems: readonly string[]; readonly terminals: number } {
+  const columns = config.units.flatMap((unit) =>
+    unit.phasors.map((p, indexInUnit) => ({ unitIdCode: unit.idCode, name: p.name, indexInUnit })),
+  );
+  const terminals = network.lines
+    .flatMap((line) => line.terminals)
+    .filter((t): t is Terminal & { measured: NonNullable<Terminal["measured"]> } => t.measured?.feedId === feedId);
+  const problems = terminals.flatMap((t) => {
+    const bound = bindTerminal(columns, t.measured);
+    return "problem" in bound ? [`${t.id}: ${bound.problem}`] : [];
+  });
+  return { problems, terminals: terminals.length };
+}
