@@ -11,10 +11,10 @@ export class RecordingWriter {
   readonly #stream: WriteStream;
   leftOut = 0;
 
-  /** Appends when the file exists: a reconnected feed begins with its configuration again. */
-  constructor(folder: string, feedId: string) {
+  /** By default appends when the file exists: a reconnected feed begins with its configuration again. */
+  constructor(folder: string, feedId: string, how: "append" | "replace" = "append") {
     mkdirSync(folder, { recursive: true });
-    this.#stream = createWriteStream(join(folder, recordingName(feedId)), { flags: "a" });
+    this.#stream = createWriteStream(join(folder, recordingName(feedId)), { flags: how === "append" ? "a" : "w" });
     this.#stream.on("error", () => {
       this.leftOut++;
     });

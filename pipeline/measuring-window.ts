@@ -34,7 +34,7 @@ export function makeWindow(taps: Float64Array, stepS: number, origin: string): M
 
 /**
  * The reference window of a class. For a rate that the table lacks, that of the nearest rate in it (by ratio), and `origin` says so.
- *   P: h(k) = 1 − 2|k|/(N+2)     M: h(k) = sinc(2·F·k/fs)·hamming(k)
+ *   P: h(k) = 1 − 2|k|/(N+2)     M: h(k) = sin(x)/x·hamming(k), x = 2π·(2F/fs)·k
  */
 export function referenceWindow(pmuClass: PmuClass, nominalHz: 50 | 60, reportingRateHz: number): MeasuringWindow {
   const fs = SAMPLES_PER_CYCLE * nominalHz;
@@ -53,7 +53,7 @@ export function referenceWindow(pmuClass: PmuClass, nominalHz: 50 | 60, reportin
   const [f, order] = table[rate]!;
   const taps = Float64Array.from({ length: order + 1 }, (_, i) => {
     const k = i - order / 2;
-    const x = (2 * Math.PI * f * k) / fs;
+    const x = (2 * Math.PI * 2 * f * k) / fs;
     return (k === 0 ? 1 : Math.sin(x) / x) * (0.54 + 0.46 * Math.cos((2 * Math.PI * k) / order));
   });
   const origin =
