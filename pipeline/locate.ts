@@ -134,7 +134,7 @@ function earlyPhasors(ends: readonly CapturedEnd[], progress: readonly Progress[
   if (!a || !b || a.window.origin !== b.window.origin) return undefined;
   const deepest = (end: CapturedEnd, p: Progress) => end.capture.timesS[p.excursionAmp.indexOf(p.peakAmp)]!;
   const at = Math.min(deepest(a, progress[0]!), deepest(b, progress[1]!));
-  if (at < Math.max(a.disturbedS, b.disturbedS) + a.window.halfS / 2) return undefined;
+  if (at < Math.min(a.disturbedS, b.disturbedS) + a.window.halfS / 2) return undefined;
   const phasors = [mixedFrame(a.capture, a.window, a.disturbedS, at), mixedFrame(b.capture, b.window, b.disturbedS, at)].filter(
     (x) => x !== undefined,
   );
