@@ -24,7 +24,8 @@ const course = (clearAfterS: number): Course => ({
 
 function run(network: Network, ends: readonly (EndPhasorSet | undefined)[], c: Course): DisturbanceEvent[] {
   const tracker = new DisturbanceTracker(network);
-  const events = [...blocksOf(network, ends, c)].flatMap((block) => tracker.step(block));
+  const events: DisturbanceEvent[] = [];
+  for (const block of blocksOf(network, ends, c)) events.push(...tracker.step(block));
   return [...events, ...tracker.finish()];
 }
 const faultOf = (fault: Partial<TwoSource>) => solve(example(fault));
