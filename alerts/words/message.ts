@@ -1,0 +1,67 @@
+/** What a person is told at one fact of an incident: lines of plain text, the most important first. */
+import type { Network } from "../../config/index.ts";
+import type { FactBody } from "../incident/facts.ts";
+import type { IncidentState } from "../incident/fold.ts";
+import { CAUTION } from "./caution.ts";
+import { firstLine, kmText } from "./first-line.ts";
+import { bothTimes } from "./times.ts";
+
+export interface Message {
+  /** One or two words: what this message is. */
+  readonly head: string;
+  readonly lines: readonly string[];
+  /** A fault on a line that needs a person, or a correction of one. */
+  readonly isAlarm: boolean;
+}
+
+/** @returns undefined for facts that nobody is told of */
+export function messageOf(body: FactBody, state: IncidentState, network: Network): Message | undefined {
+  const id = `incident ${state.incident}`;
+  const line = network.lines.find((l) => l.id === state.location?.lineId);
+  const name = (stationId: string) => network.stations.find((s) => s.id === stationId)?.name ?? stationId;
+  switch (body.kind) {
+    case "noticed":
+      return { head: "Noticed", lines: [`${firstLine(state, network)}, ${id}`], isAlarm: false };
+    case "located": {
+      const correction =
+        state.corrects && body.location.km !== null && state.corrects.km !== null
+          ? `CORRECTION: was ${kmText(state.corrects.km)} km, now ${kmText(body.location.km)} km from ${line ? name(line.terminals[0]!.stationId) : "the first station"}`
+          : undefined;
+      const far =
+        line && body.location.km !== null
+          ? [`${kmText(line.lengthKm - body.location.km)} km from ${name(line.terminals.at(-1)!.stationId)}`]
+          : [];
+      const span = body.location.spanTowers ? [`span ${body.location.spanTowers.from}-${body.location.spanTowers.to}`] : [];
+      const ohm =
+        body.location.resistanceOhm === null
+          ? []
+          : [`${body.location.resistanceOhm.toFixed(body.location.resistanceOhm < 10 ? 1 : 0)} ohm`];
+      return {
+        head: correction ? "Correction" : { provisional: "Located, so far", refined: "Located", settled: "Settled" }[body.stage],
+        lines: [
+          ...(correction ? [correction] : []),
+          `${firstLine(state, network)}, ${id}`,
+          [...span, ...far, ...ohm].join(", "),
+          `Why: ${body.location.reasons.join("; ")}`,
+          CAUTION,
+        ].filter((l) => l !== ""),
+        isAlarm: body.stage === "provisional" || correction !== undefined || state.revision <= 2,
+      };
+    }
+    case "cleared": {
+      const where =
+        body.noCurrentAt.length > 0
+          ? `No current at ${body.noCurrentAt.map(name).join(" and ")} since ${bothTimes(body.clearedUs, network.timeZone)}`
+          : `Fault current ended at ${bothTimes(body.clearedUs, network.timeZone)}`;
+      const ms = Math.round((body.clearedUs - state.onsetUs) / 1000);
+      return { head: "Cleared", lines: [`${where}, after ${ms} ms, ${id}`], isAlarm: false };
+    }
+    case "outside":
+      return { head: "Outside", lines: [`${firstLine(state, network)}, ${id}`], isAlarm: false };
+    case "acknowledged":
+      return { head: "Acknowledged", lines: [`${id} acknowledged by ${body.by}`], isAlarm: false };
+    case "note":
+    case "ended":
+      return undefined;
+  }
+}
