@@ -6,7 +6,7 @@ import type { Channel } from "./channel.ts";
 export const terminalSettings = z.strictObject({ id: z.string(), kind: z.literal("terminal") });
 
 export function terminalChannel(id: string, out: NodeJS.WritableStream & { isTTY?: boolean }): Channel {
-  const colours = pc.createColors(out.isTTY === true && !process.env["NO_COLOR"]);
+  const colours = pc.createColors(out.isTTY === true && !process.env.NO_COLOR);
   return {
     id,
     deliver({ message }) {
