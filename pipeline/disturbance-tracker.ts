@@ -40,7 +40,8 @@ interface Watched {
 
 interface Open {
   readonly id: string;
-  readonly detectedUs: number;
+  /** Earliest disturbed stamp of any terminal so far. */
+  detectedUs: number;
   /** By terminal id. */
   readonly triggers: Map<string, Trigger>;
   stage: LocateStage | undefined;
@@ -48,8 +49,8 @@ interface Open {
   told: { lineId: string; stretch: readonly [number, number] | null } | undefined;
   isCleared: boolean;
   lastTriedUs: number;
-  /** When the terminals of the line in question came to rest. */
-  restUs: number | undefined;
+  /** Data time since which at least one terminal of the line in question has been at rest. */
+  someRestUs: number | undefined;
 }
 
 export interface TrackerProblem {
@@ -132,6 +133,7 @@ export class DisturbanceTracker {
     );
     if (same) {
       if (!same.triggers.has(watched.terminal.id)) same.triggers.set(watched.terminal.id, trigger);
+      same.detectedUs = Math.min(same.detectedUs, trigger.timeUs);
       return;
     }
     const open: Open = {
@@ -142,7 +144,7 @@ export class DisturbanceTracker {
       told: undefined,
       isCleared: false,
       lastTriedUs: 0,
-      restUs: undefined,
+      someRestUs: undefined,
     };
     this.#open.push(open);
     events.push({
@@ -173,15 +175,17 @@ export class DisturbanceTracker {
     const isDeadline = sinceUs > GIVE_UP_US;
     const lines = this.#candidates(open);
     const rest = this.#restOf(open, lines);
-    if (rest === "moving" && sinceUs < STILL_ON_US) open.restUs = undefined;
-    else open.restUs ??= this.#newestUs;
-    const isSettled =
-      open.restUs !== undefined && this.#newestUs - open.restUs >= SETTLE_US && (rest === "all" || sinceUs > OTHER_END_US);
-    const isFinal = isSettled || isDeadline;
-    const stage: LocateStage = isFinal ? "settled" : rest === "all" ? "refined" : "provisional";
+    const now = this.#newestUs;
+    open.someRestUs = rest.kind === "moving" && sinceUs < STILL_ON_US ? undefined : (open.someRestUs ?? now);
+    const isComplete = rest.kind === "all" && rest.reachedUs >= rest.sinceUs + SETTLE_US;
+    const isOverdue = open.someRestUs !== undefined && now - open.someRestUs >= OTHER_END_US;
+    const isFinal = isComplete || isOverdue || isDeadline;
+    const stage: LocateStage = isFinal ? "settled" : rest.kind === "all" ? "refined" : "provisional";
+    // The settled answer rests on frames up to a time that the frames themselves give, so that a replay comes to the same.
+    const untilUs = isComplete ? rest.sinceUs + SETTLE_US : now;
     if (open.stage === stage || (open.stage === "refined" && stage === "provisional")) return isDeadline;
 
-    const findings = lines.map((line) => ({ line, finding: locate(this.#disturbanceOf(open, line, stage)) }));
+    const findings = lines.map((line) => ({ line, finding: locate(this.#disturbanceOf(open, line, stage, untilUs)) }));
     const located = findings.flatMap(({ line, finding }) => (finding.kind === "located" ? [{ line, finding }] : []));
     const best = located.sort((p, q) => strength(q.finding) - strength(p.finding))[0];
     if (best) this.#tell(open, best.line, best.finding, stage, events);
@@ -205,15 +209,6 @@ export class DisturbanceTracker {
     const clearedUs = finding.clearingS === Number.POSITIVE_INFINITY ? null : this.#toUs(open, finding.clearingS);
     const location = { ...finding.location, reasons: [...finding.location.reasons, ...whatChanged(open.told, finding.location)] };
     open.told = { lineId: line.id, stretch: location.stretchKm };
-    events.push({
-      kind: "located",
-      disturbanceId: open.id,
-      dataTimeUs: this.#newestUs,
-      stage,
-      onsetUs: this.#toUs(open, finding.onsetS),
-      clearedUs,
-      location,
-    });
     if (clearedUs !== null && !open.isCleared) {
       open.isCleared = true;
       const noCurrentAt = this.#withoutCurrent(open, line);
@@ -226,6 +221,15 @@ export class DisturbanceTracker {
         noCurrentAt,
       });
     }
+    events.push({
+      kind: "located",
+      disturbanceId: open.id,
+      dataTimeUs: this.#newestUs,
+      stage,
+      onsetUs: this.#toUs(open, finding.onsetS),
+      clearedUs,
+      location,
+    });
   }
 
   /** Lines of which a terminal saw it, largest jump first. */
@@ -242,14 +246,23 @@ export class DisturbanceTracker {
     return line.terminals.flatMap((t) => this.#byTerminal.get(t.id) ?? []).filter((w) => w.view);
   }
 
-  /** Whether the phasors of the candidate lines' terminals are at rest: of all, of some, or of none. */
-  #restOf(open: Open, lines: readonly Line[]): "all" | "some" | "moving" {
+  /** Whether the phasors of the likeliest line's terminals are at rest: all, some or none; since when the last of them, and how far all have come. */
+  #restOf(
+    open: Open,
+    lines: readonly Line[],
+  ): { readonly kind: "all" | "some" | "moving"; readonly sinceUs: number; readonly reachedUs: number } {
     const terminals = lines.slice(0, 1).flatMap((line) => this.#terminalsOf(line));
-    const resting = terminals.filter((w) => {
-      const end = this.#endOf(open, w);
-      return end && progressOf(end.capture, end.disturbedS).restsSince !== undefined;
+    const ends = terminals.flatMap((w) => this.#endOf(open, w, this.#newestUs) ?? []);
+    const resting = ends.flatMap((end) => {
+      const since = progressOf(end.capture, end.disturbedS).restsSince;
+      return since === undefined ? [] : [end.capture.timesS[since]!];
     });
-    return resting.length === 0 ? "moving" : resting.length === terminals.length ? "all" : "some";
+    const kind = resting.length === 0 ? "moving" : resting.length === terminals.length ? "all" : "some";
+    return {
+      kind,
+      sinceUs: this.#toUs(open, Math.max(...resting, 0)),
+      reachedUs: this.#toUs(open, Math.min(...ends.map((e) => e.capture.timesS.at(-1)!))),
+    };
   }
 
   #epochUs(open: Open): number {
@@ -259,24 +272,17 @@ export class DisturbanceTracker {
     return Math.round(this.#epochUs(open) + seconds * 1e6);
   }
 
-  #endOf(open: Open, watched: Watched): CapturedEnd | undefined {
+  #endOf(open: Open, watched: Watched, untilUs: number): CapturedEnd | undefined {
     if (!watched.view) return undefined;
     const epochUs = this.#epochUs(open);
     const disturbedUs = open.triggers.get(watched.terminal.id)?.timeUs ?? open.detectedUs;
-    const capture = captureTerminal(
-      watched.view,
-      watched.nominalHz,
-      epochUs,
-      disturbedUs - BEFORE_US,
-      this.#newestUs,
-      disturbedUs,
-    );
+    const capture = captureTerminal(watched.view, watched.nominalHz, epochUs, disturbedUs - BEFORE_US, untilUs, disturbedUs);
     if (capture.timesS.length < 6) return undefined;
     return { capture, window: watched.window, disturbedS: (disturbedUs - epochUs) / 1e6 };
   }
 
-  #disturbanceOf(open: Open, line: Line, stage: LocateStage) {
-    const ends = this.#terminalsOf(line).flatMap((w) => this.#endOf(open, w) ?? []);
+  #disturbanceOf(open: Open, line: Line, stage: LocateStage, untilUs: number) {
+    const ends = this.#terminalsOf(line).flatMap((w) => this.#endOf(open, w, untilUs) ?? []);
     // At the deadline an end that has not come to rest (or has stopped sending) is left out, if another has.
     const rested = ends.filter((e) => progressOf(e.capture, e.disturbedS).restsSince !== undefined);
     const stationName = (id: string) => this.#network.stations.find((s) => s.id === id)?.name ?? id;
@@ -286,7 +292,7 @@ export class DisturbanceTracker {
   /** Stations of the line where no phase carries current in the newest frames. */
   #withoutCurrent(open: Open, line: Line): string[] {
     return this.#terminalsOf(line).flatMap((w) => {
-      const end = this.#endOf(open, w);
+      const end = this.#endOf(open, w, this.#newestUs);
       if (!end) return [];
       const { peakAmp } = progressOf(end.capture, end.disturbedS);
       const last = (end.capture.timesS.length - 1) * 12;

@@ -2,15 +2,18 @@
 import type { Line } from "../config/index.ts";
 import type { TerminalCapture } from "./capture.ts";
 import { type Combined, combine, towerSpan } from "./combine.ts";
+import { abs } from "./complex.ts";
 import { judge } from "./direction.ts";
 import { type EndPhasors, type Evidence, faultCurrents, gatherEvidence, NEGATIVE_TWO_ENDED } from "./evidence.ts";
+import { phasesOf } from "./fault-loop.ts";
 import { flagOf } from "./flag.ts";
 import { mixedFrame, unmixedPhasors, wholeWindowPhasors } from "./frame-choice.ts";
 import type { MeasuringWindow } from "./measuring-window.ts";
 import { selectPhases } from "./phase-selection.ts";
 import { roughTiming } from "./rough-timing.ts";
 import { type Progress, progressOf } from "./steadiness.ts";
-import type { LocateStage, Location } from "./types.ts";
+import { NUMBERS_PER_ROW } from "./terminal-view.ts";
+import type { FaultType, LocateStage, Location } from "./types.ts";
 import { fitTiming, PROFILE, prepareEnd, type Timing } from "./unmix.ts";
 
 export interface CapturedEnd {
@@ -64,7 +67,8 @@ export function locate(disturbance: LineDisturbance): Finding {
     : earlyPhasors(disturbance.ends, progress);
   if (!phasors) return { kind: "wait" };
   const { ends, timing } = phasors;
-  const verdict = judge(ends);
+  const verdict = judge(ends, disturbance.line.nominalKv, phasors.isMixed);
+  if (verdict.kind === "undecided") return { kind: "wait" };
   const onsetS = timing.onsetS;
   if (verdict.kind === "no fault") return { kind: "elsewhere", reason: verdict.reason, onsetS };
   if (verdict.kind === "behind") {
@@ -77,7 +81,29 @@ export function locate(disturbance: LineDisturbance): Finding {
   }
   const location = locationOf(disturbance, phasors);
   if (!location) return { kind: "wait" };
+  if (Number.isFinite(timing.clearingS) && !hasOpened(disturbance.ends, ends, location.phases)) {
+    return { kind: "elsewhere", reason: `not a fault: no pole of ${disturbance.line.name} opened`, onsetS };
+  }
   return { kind: "located", location, onsetS, clearingS: timing.clearingS };
+}
+
+/** Current of a faulted pole after the clearing, over the larger of its currents in and before the fault, that counts as none. */
+const OPENED_SHARE = 0.05;
+
+/**
+ * A fault on this line that ended was ended by this line's breakers: at one measured end at least, the faulted poles carry nothing now. Otherwise the
+ * current came and went for another reason: poles closing one after the other, a fault elsewhere.
+ */
+function hasOpened(captured: readonly CapturedEnd[], ends: readonly EndPhasors[], type: FaultType): boolean {
+  return ends.some((end) => {
+    const capture = captured.find((c) => c.capture.terminal.id === end.terminal.id)!.capture;
+    const last = (capture.timesS.length - 1) * NUMBERS_PER_ROW;
+    return phasesOf(type).every((p) => {
+      const c = 3 + p;
+      const now = Math.hypot(capture.phasors[last + 2 * c]!, capture.phasors[last + 2 * c + 1]!);
+      return now < OPENED_SHARE * Math.max(abs(end.fault[c]!), abs(end.pre[c]!));
+    });
+  });
 }
 
 /** All windows have passed all changes: fit onset and clearing on all ends together, then take the best phasors of each end. */

@@ -20,6 +20,8 @@ export interface IncidentState {
   readonly outside: string | null;
   readonly isEnded: boolean;
   readonly acknowledged: { readonly by: string; readonly atUs: number } | null;
+  /** The newest fact is the first place that was told. */
+  readonly isFirstLocation: boolean;
   /** Stretch that was told at the stage before, when the place now lies outside it. */
   readonly corrects: { readonly km: number | null; readonly stretchKm: readonly [number, number] | null } | null;
 }
@@ -48,10 +50,11 @@ export function withFact(state: IncidentState | undefined, fact: Fact): Incident
       outside: null,
       isEnded: false,
       acknowledged: null,
+      isFirstLocation: false,
       corrects: null,
     };
   }
-  const next = { ...state, revision: state.revision + 1 };
+  const next = { ...state, revision: state.revision + 1, isFirstLocation: false };
   switch (body.kind) {
     case "noticed":
       return next;
@@ -63,6 +66,7 @@ export function withFact(state: IncidentState | undefined, fact: Fact): Incident
         clearedUs: body.clearedUs ?? state.clearedUs,
         location: body.location,
         outside: null,
+        isFirstLocation: state.location === null,
         corrects: isCorrection(state.location, body.location)
           ? { km: state.location!.km, stretchKm: state.location!.stretchKm }
           : null,

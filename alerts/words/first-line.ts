@@ -10,10 +10,11 @@ import { bothTimes } from "./times.ts";
 
 export function firstLine(state: IncidentState, network: Network): string {
   const time = bothTimes(state.onsetUs, network.timeZone);
-  if (state.outside !== null) return `Outside the monitored lines: ${state.outside}, ${time}`;
   const { location } = state;
   const line = network.lines.find((l) => l.id === (location?.lineId ?? state.lineIds[0]));
   const title = line ? `${line.name} ${line.nominalKv} kV` : "Unknown line";
+  if (state.outside !== null)
+    return isNoFault(state) ? `${title}, ${state.outside}, ${time}` : `Outside the monitored lines: ${state.outside}, ${time}`;
   if (!location || !line) return `${title}, disturbance noticed, place not yet known, ${time}`;
   return [
     title,
@@ -26,6 +27,9 @@ export function firstLine(state: IncidentState, network: Network): string {
     .filter((part) => part !== "")
     .join(", ");
 }
+
+/** The disturbance was seen, and is no fault anywhere. */
+export const isNoFault = (state: IncidentState): boolean => state.outside?.startsWith("not a fault") ?? false;
 
 const stationName = (network: Network, id: string): string => network.stations.find((s) => s.id === id)?.name ?? id;
 const firstStation = (line: Line, network: Network): string => stationName(network, line.terminals[0]!.stationId);

@@ -3,7 +3,7 @@ import type { Network } from "../../config/index.ts";
 import type { FactBody } from "../incident/facts.ts";
 import type { IncidentState } from "../incident/fold.ts";
 import { CAUTION } from "./caution.ts";
-import { firstLine, kmText } from "./first-line.ts";
+import { firstLine, isNoFault, kmText } from "./first-line.ts";
 import { bothTimes } from "./times.ts";
 
 export interface Message {
@@ -45,7 +45,7 @@ export function messageOf(body: FactBody, state: IncidentState, network: Network
           `Why: ${body.location.reasons.join("; ")}`,
           CAUTION,
         ].filter((l) => l !== ""),
-        isAlarm: body.stage === "provisional" || correction !== undefined || state.revision <= 2,
+        isAlarm: state.isFirstLocation || correction !== undefined,
       };
     }
     case "cleared": {
@@ -57,7 +57,16 @@ export function messageOf(body: FactBody, state: IncidentState, network: Network
       return { head: "Cleared", lines: [`${where}, after ${ms} ms, ${id}`], isAlarm: false };
     }
     case "outside":
-      return { head: "Outside", lines: [`${firstLine(state, network)}, ${id}`], isAlarm: false };
+      return state.location
+        ? {
+            head: "Correction",
+            lines: [
+              `CORRECTION: no fault on ${line?.name ?? "the line"}, as was told before`,
+              `${firstLine(state, network)}, ${id}`,
+            ],
+            isAlarm: true,
+          }
+        : { head: isNoFault(state) ? "No fault" : "Outside", lines: [`${firstLine(state, network)}, ${id}`], isAlarm: false };
     case "acknowledged":
       return { head: "Acknowledged", lines: [`${id} acknowledged by ${body.by}`], isAlarm: false };
     case "note":

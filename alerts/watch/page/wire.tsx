@@ -89,8 +89,8 @@ function Straight({
 }) {
   const middle = line.lengthKm / 2;
   const halves = [
-    [0, middle, sees[0] || (!sees[0] && sees[1] && line.ends[0]?.feedId === undefined)],
-    [middle, line.lengthKm, sees[1] || (sees[0] && line.ends[1]?.feedId === undefined)],
+    [0, middle, sees[0]],
+    [middle, line.lengthKm, sees[1]],
   ] as const;
   return (
     <>
