@@ -11,7 +11,7 @@ import { asyncScheduler, from } from "rxjs";
 import { ChannelError, foldEvents, openAlerts, StoreError, WatchServerError } from "./alerts/index.ts";
 import { ConfigError, demoNetworkPath, loadNetwork, type Network, networkJsonSchema } from "./config/index.ts";
 import { openFeeds, RecordingError, replayRecordings } from "./ingest/index.ts";
-import { watchDisturbances } from "./pipeline/index.ts";
+import { type DisturbanceEvent, watchDisturbances } from "./pipeline/index.ts";
 import { checkedScenario, namedScenario, ScenarioError, scenarioNames, serveNetwork, writeScenario } from "./simulator/index.ts";
 
 const ONCE_LIMIT_MS = 60_000;
@@ -152,17 +152,18 @@ function locate(flags: { network: string; feed: Map<string, string>; json?: bool
   return 0;
 }
 
-function locatedIn(network: Network, files: ReadonlyMap<string, string>, log: Logger) {
-  const events: Parameters<typeof foldEvents>[0] extends Iterable<infer E> ? E[] : never = [];
-  const source = replayRecordings(network, files, log);
-  from(source)
+function locatedIn(network: Network, files: ReadonlyMap<string, string>, log: Logger): DisturbanceEvent[] {
+  const events: DisturbanceEvent[] = [];
+  let failure: unknown;
+  from(replayRecordings(network, files, log))
     .pipe(watchDisturbances(network, { onProblem: ({ feedId, problem }) => log.warn({ feed: feedId }, problem) }))
     .subscribe({
       next: (event) => events.push(event),
       error: (error) => {
-        throw error;
+        failure = error;
       },
     });
+  if (failure !== undefined) throw failure;
   return events;
 }
 

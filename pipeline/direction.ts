@@ -59,7 +59,7 @@ export function judge(ends: readonly EndPhasors[], nominalKv: number, isMoving: 
     const i = toSequence([delta(end, 3), delta(end, 4), delta(end, 5)]);
     return abs(i.negative) / Math.max(abs(i.positive), 1e-9);
   });
-  if (ends.every(wasOpen) && dip < DIP) return { kind: "no fault", reason: "not a fault: line switched in" };
+  if (ends.some(wasOpen) && dip < DIP) return { kind: "no fault", reason: "not a fault: line switched in" };
   if (dip < DIP && unbalance < UNBALANCE)
     return { kind: "no fault", reason: "not a fault: balanced change without a voltage dip" };
   for (const end of ends) if (forwardness(end) < 0) return { kind: "behind", endIndex: end.terminal.index };

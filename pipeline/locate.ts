@@ -87,8 +87,12 @@ export function locate(disturbance: LineDisturbance): Finding {
   return { kind: "located", location, onsetS, clearingS: timing.clearingS };
 }
 
-/** Current of a faulted pole after the clearing, over the larger of its currents in and before the fault, that counts as none. */
-const OPENED_SHARE = 0.05;
+/**
+ * Current of a faulted pole after the clearing that counts as none: share of its fault current (a current transformer's own dying current), and ampere
+ * (noise). A line that is charged from the other end carries tens of ampere: that is not none.
+ */
+const OPENED_SHARE = 0.005;
+const OPENED_AMP = 5;
 
 /**
  * A fault on this line that ended was ended by this line's breakers: at one measured end at least, the faulted poles carry nothing now. Otherwise the
@@ -101,7 +105,8 @@ function hasOpened(captured: readonly CapturedEnd[], ends: readonly EndPhasors[]
     return phasesOf(type).every((p) => {
       const c = 3 + p;
       const now = Math.hypot(capture.phasors[last + 2 * c]!, capture.phasors[last + 2 * c + 1]!);
-      return now < OPENED_SHARE * Math.max(abs(end.fault[c]!), abs(end.pre[c]!));
+      const inFault = abs(end.fault[c]!);
+      return now < Math.max(OPENED_AMP, OPENED_SHARE * inFault) && inFault > 4 * OPENED_AMP;
     });
   });
 }

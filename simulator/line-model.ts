@@ -173,6 +173,7 @@ export function runEpisode(episode: Episode, sources: readonly [Source, Source],
         } else if (!circuit.isClosed(pole) && t >= episode.closeS[e]!) circuit.setSwitch(pole, true);
         end.before[k] = i;
       });
+      // Currents as they were solved, before a pole changed its state.
       // Half a sample's steps to either side, the outermost shared with the neighbour.
       const after = (step + 1) % STEPS_PER_SAMPLE;
       const n = Math.floor((step + 1) / STEPS_PER_SAMPLE);
@@ -190,7 +191,7 @@ export function runEpisode(episode: Episode, sources: readonly [Source, Source],
         if (sample >= samples) continue;
         for (let k = 0; k < 3; k++) {
           channels[e]![k]![sample]! += share * circuit.v[end.vtNodes[k]!]!;
-          channels[e]![3 + k]![sample]! += share * circuit.switchCurrent(end.poles[k]!);
+          channels[e]![3 + k]![sample]! += share * end.before[k]!;
         }
       }
     });
