@@ -34,7 +34,13 @@ export function openFeeds(
 ): OpenFeeds {
   const blocks = new Subject<FrameBlock>();
   const writers: RecordingWriter[] = [];
-  const feeds = network.feeds.map((feed) => {
+  const health = new BehaviorSubject<readonly FeedHealth[]>([]);
+  let isTelling = false;
+  const tell = () => {
+    isTelling = false;
+    health.next(feeds.map((feed) => feed.health()));
+  };
+  const feeds: TcpFeed[] = network.feeds.map((feed) => {
     const writer = recordTo === undefined ? undefined : new RecordingWriter(recordTo, feed.id);
     if (writer) writers.push(writer);
     return new TcpFeed(
@@ -42,6 +48,11 @@ export function openFeeds(
       network,
       {
         onBlock: (block) => blocks.next(block),
+        onState: () => {
+          // However many feeds change in one turn, it is told once.
+          if (!isTelling) queueMicrotask(tell);
+          isTelling = true;
+        },
         ...(writer ? { onFrame: (bytes: Uint8Array, at: number, size: number) => writer.write(bytes, at, size) } : {}),
         onLog: sparingly(log.child({ feed: feed.id }), now),
       },
@@ -49,10 +60,9 @@ export function openFeeds(
       random,
     );
   });
-  const health = new BehaviorSubject<readonly FeedHealth[]>(feeds.map((feed) => feed.health()));
   const look = () => {
     for (const feed of feeds) feed.tick();
-    health.next(feeds.map((feed) => feed.health()));
+    tell();
   };
   look();
   const timer = setInterval(look, TICK_MS);

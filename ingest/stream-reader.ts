@@ -21,7 +21,7 @@ const LARGEST_BEFORE_CONFIGURATION = 65_535;
 export interface StreamEvents {
   /** Whole frame as received, for recordings; valid during the call only. */
   readonly onFrame?: (bytes: Uint8Array, at: number, size: number) => void;
-  /** A usable configuration came, first or changed. */
+  /** A usable configuration came: the first, a changed one, or the same again (after a reconnection). */
   readonly onConfiguration: (config: StreamConfig) => void;
   /** A row was written. */
   readonly onRow: (slot: number) => void;
@@ -92,7 +92,10 @@ export class StreamReader {
   #takeConfiguration(bytes: Uint8Array, at: number, size: number): boolean {
     // The frame's own time and CRC differ each time it is sent; what it says is between them.
     const said = Buffer.from(bytes.subarray(at + 14, at + size - 2));
-    if (this.#configurationBytes?.equals(said)) return true;
+    if (this.config && this.#configurationBytes?.equals(said)) {
+      this.#events.onConfiguration(this.config);
+      return true;
+    }
     try {
       this.config = decodeConfig(bytes, at, size);
     } catch (error) {

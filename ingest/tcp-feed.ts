@@ -20,6 +20,8 @@ const LONGEST_RETRY_US = 15e6;
 export interface TcpFeedEvents {
   readonly onBlock: (block: FrameBlock) => void;
   readonly onFrame?: (bytes: Uint8Array, at: number, size: number) => void;
+  /** The state or its reason changed. */
+  readonly onState: () => void;
   readonly onLog: (level: "info" | "warn", words: string, detail?: { code: FrameDefect }) => void;
 }
 
@@ -169,6 +171,7 @@ export class TcpFeed {
     this.#state = state;
     this.#reason = reason;
     this.#sinceUs = this.#now();
+    if (isNews) this.#events.onState();
     if (isNews && state !== "connecting" && state !== "configuring")
       this.#events.onLog(state === "live" ? "info" : "warn", state === "live" ? "live" : reason);
   }

@@ -17,13 +17,18 @@ if (missing.length > 0) {
   const canInstall = process.getuid?.() === 0 && existsSync("/etc/debian_version");
   if (canInstall) {
     console.log(`Installing for the tests: ${packages.join(", ")}`);
-    const apt = (...args) => spawnSync("apt-get", args, { stdio: ["ignore", "ignore", "inherit"], env: { ...process.env, DEBIAN_FRONTEND: "noninteractive" } });
+    const apt = (...args) =>
+      spawnSync("apt-get", args, {
+        stdio: ["ignore", "ignore", "inherit"],
+        env: { ...process.env, DEBIAN_FRONTEND: "noninteractive" },
+      });
     apt("update");
     apt("install", "-y", "--no-install-recommends", ...packages);
   }
   const still = missing.filter((need) => !isThere(need.program));
   if (still.length > 0) {
-    for (const need of still) console.error(`Missing: ${need.program} (${need.why}). On Debian or Ubuntu: sudo apt-get install ${need.package}`);
+    for (const need of still)
+      console.error(`Missing: ${need.program} (${need.why}). On Debian or Ubuntu: sudo apt-get install ${need.package}`);
     process.exit(1);
   }
 }

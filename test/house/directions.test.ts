@@ -8,7 +8,8 @@ describe("imports between folders", () => {
   it("go only in the direction data flows, and through the other folder's door", () => {
     const files = sources(root);
     const imports = files.flatMap((file) => importsOf(file, readSource(root, file)));
-    for (const folder of Object.keys(permitted)) expect(files.filter((f) => f.startsWith(`${folder}/`)).length, `sources seen in ${folder}/`).toBeGreaterThan(2);
+    for (const folder of Object.keys(permitted))
+      expect(files.filter((f) => f.startsWith(`${folder}/`)).length, `sources seen in ${folder}/`).toBeGreaterThan(2);
     expect(imports.length, "a check that saw nothing passes").toBeGreaterThan(100);
     expect(imports.map(violation).filter((v) => v !== undefined)).toEqual([]);
   });

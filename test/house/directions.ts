@@ -23,12 +23,14 @@ export interface Import {
 /** Relative imports and re-exports of one source text, also dynamic ones. */
 export function importsOf(file: string, text: string): Import[] {
   const found: Import[] = [];
-  const pattern = /(?:^|\n)\s*(import|export)\s+(type\s+)?([^"';]*?from\s*)?["'](\.[^"']+)["']|import\(\s*["'](\.[^"']+)["']\s*\)/g;
+  const pattern =
+    /(?:^|\n)\s*(import|export)\s+(type\s+)?([^"';]*?from\s*)?["'](\.[^"']+)["']|import\(\s*["'](\.[^"']+)["']\s*\)/g;
   for (const match of text.matchAll(pattern)) {
     const target = match[4] ?? match[5]!;
     const names = match[3] ?? "";
     const inner = /\{([^}]*)\}/.exec(names)?.[1];
-    const everyNameIsType = inner !== undefined && inner.split(",").every((n) => n.trim() === "" || n.trim().startsWith("type ")) && !/^[^{]*\w[^{]*\{/.test(names);
+    const everyNameIsType =
+      inner?.split(",").every((n) => n.trim() === "" || n.trim().startsWith("type ")) && !/^[^{]*\w[^{]*\{/.test(names);
     found.push({ from: file, to: normalize(join(dirname(file), target)), isTypeOnly: match[2] !== undefined || everyNameIsType });
   }
   return found;
@@ -42,7 +44,8 @@ export function violation({ from, to, isTypeOnly }: Import): string | undefined 
   const permission = rules[target];
   if (!permission) return `${from} imports ${to}: ${folder} may not import ${target}`;
   if (permission === "types" && !isTypeOnly) return `${from} imports ${to}: ${folder} may import only types of ${target}`;
-  if (to !== join(target, "index.ts") && to !== join(target, "types.ts")) return `${from} imports ${to}: go through ${target}/index.ts or ${target}/types.ts`;
+  if (to !== join(target, "index.ts") && to !== join(target, "types.ts"))
+    return `${from} imports ${to}: go through ${target}/index.ts or ${target}/types.ts`;
   return undefined;
 }
 

@@ -111,6 +111,8 @@ describe("what is no fault on the line", () => {
   it("is nothing at all on quiet frames with noise", () => {
     const { a, b } = faultOf({});
     const quiet = (end: EndPhasorSet): EndPhasorSet => ({ pre: end.pre, fault: end.pre });
-    expect(run(plainNetwork([M60, P60]), [quiet(a), quiet(b)], { ...course(Number.POSITIVE_INFINITY), noise: 0.005 })).toEqual([]);
+    expect(run(plainNetwork([M60, P60]), [quiet(a), quiet(b)], { ...course(Number.POSITIVE_INFINITY), noise: 0.005 })).toEqual(
+      [],
+    );
   });
 });
