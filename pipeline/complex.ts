@@ -1,5 +1,5 @@
 /** Complex arithmetic on small immutable values, for formulas that run a few thousand times an event. Frame loops use typed arrays instead. */
-import type { Complex } from "../config/model.ts";
+import type { Complex } from "../config/index.ts";
 
 export type { Complex };
 

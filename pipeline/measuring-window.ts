@@ -2,7 +2,7 @@
  * The measuring window of a unit: a frame is the samples, turned back by exp(−jω₀t), averaged with a fixed symmetric window and stamped with
  * its centre. What a frame shows of a signal that exists only part of the time follows from running sums of the window.
  */
-import type { PmuClass } from "../config/model.ts";
+import type { PmuClass } from "../config/index.ts";
 
 export interface MeasuringWindow {
   /** Weights, symmetric, sum 1. */

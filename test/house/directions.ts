@@ -30,7 +30,8 @@ export function importsOf(file: string, text: string): Import[] {
     const names = match[3] ?? "";
     const inner = /\{([^}]*)\}/.exec(names)?.[1];
     const everyNameIsType =
-      inner?.split(",").every((n) => n.trim() === "" || n.trim().startsWith("type ")) && !/^[^{]*\w[^{]*\{/.test(names);
+      (inner?.split(",").every((n) => n.trim() === "" || n.trim().startsWith("type ")) ?? false) &&
+      !/^[^{]*\w[^{]*\{/.test(names);
     found.push({ from: file, to: normalize(join(dirname(file), target)), isTypeOnly: match[2] !== undefined || everyNameIsType });
   }
   return found;

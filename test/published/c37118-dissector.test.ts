@@ -1,0 +1,139 @@
+/**
+ * Frames that our codec wrote, read by an independent program: tshark's dissector for synchrophasor frames (Debian package tshark; its field names are
+ * those of `tshark -G fields`). Each frame travels as one UDP datagram to port 4712 in a capture that this test writes by hand.
+ */
+import { execFileSync } from "node:child_process";
+import { mkdtempSync, rmSync, writeFileSync } from "node:fs";
+import { tmpdir } from "node:os";
+import { join } from "node:path";
+import { afterAll, describe, expect, it } from "vitest";
+import { encodeCommand, encodeConfig, encodeData, type StreamConfig, type UnitConfig } from "../../ingest/index.ts";
+
+const folder = mkdtempSync(join(tmpdir(), "spanmark-dissector-"));
+afterAll(() => rmSync(folder, { recursive: true }));
+const TIME_US = 1_772_590_447e6 + 250_000;
+
+/** Classic pcap, Ethernet, IPv4, UDP; checksums left at zero, which the dissector accepts. */
+function capture(frames: readonly Buffer[]): Buffer {
+  const head = Buffer.alloc(24);
+  head.writeUInt32LE(0xa1b2c3d4, 0);
+  head.writeUInt16LE(2, 4);
+  head.writeUInt16LE(4, 6);
+  head.writeUInt32LE(65_535, 16);
+  head.writeUInt32LE(1, 20);
+  return Buffer.concat([
+    head,
+    ...frames.flatMap((frame, k) => {
+      const packet = Buffer.alloc(14 + 20 + 8 + frame.length);
+      packet.writeUInt16BE(0x0800, 12);
+      packet[14] = 0x45;
+      packet.writeUInt16BE(28 + frame.length, 16);
+      packet[22] = 64;
+      packet[23] = 17;
+      packet.writeUInt32BE(0x7f000001, 26);
+      packet.writeUInt32BE(0x7f000001, 30);
+      packet.writeUInt16BE(4712, 34);
+      packet.writeUInt16BE(4712, 36);
+      packet.writeUInt16BE(8 + frame.length, 38);
+      frame.copy(packet, 42);
+      const record = Buffer.alloc(16);
+      record.writeUInt32LE(1_772_590_447, 0);
+      record.writeUInt32LE(k * 1000, 4);
+      record.writeUInt32LE(packet.length, 8);
+      record.writeUInt32LE(packet.length, 12);
+      return [record, packet];
+    }),
+  ]);
+}
+
+function dissected(name: string, frames: readonly Buffer[]): string {
+  const path = join(folder, `${name}.pcap`);
+  writeFileSync(path, capture(frames));
+  try {
+    return execFileSync("tshark", ["-r", path, "-d", "udp.port==4712,synphasor", "-V", "-O", "synphasor"], {
+      encoding: "utf8",
+      stdio: ["ignore", "pipe", "pipe"],
+    });
+  } catch (cause) {
+    throw new Error("tshark could not be run: on Debian, apt-get install tshark (npm test does so as root)", { cause });
+  }
+}
+
+const unit = (over: Partial<UnitConfig>): UnitConfig => ({
+  name: "Brack",
+  idCode: 241,
+  phasorsArePolar: false,
+  phasorsAreFloat: true,
+  analogsAreFloat: true,
+  frequencyIsFloat: true,
+  phasors: [
+    { name: "VA", kind: "voltage", perBit: 10 },
+    { name: "IA", kind: "current", perBit: 0.5 },
+  ],
+  analogs: [{ name: "MW", kind: "rms", scale: 1 }],
+  digitals: [{ names: Array.from({ length: 16 }, (_, k) => `D${k}`), normal: 0, valid: 3 }],
+  nominalHz: 60,
+  configurationCount: 5,
+  ...over,
+});
+const stream = (...units: UnitConfig[]): StreamConfig => ({ idCode: 241, timeBase: 1_000_000, reportingRateHz: 60, units });
+const numbers = (text: string, pattern: RegExp) => [...text.matchAll(pattern)].map((m) => m.slice(1).map(Number));
+
+describe("an independent dissector reads what our codec wrote", () => {
+  it("configuration 2 of two unlike units", () => {
+    const config = stream(
+      unit({}),
+      unit({ name: "Tolva", idCode: 242, phasorsArePolar: true, phasorsAreFloat: false, frequencyIsFloat: false, nominalHz: 50 }),
+    );
+    const text = dissected("configuration", [encodeConfig(config, "configuration-2", TIME_US)]);
+    expect(text).toMatch(/Checksum: 0x[0-9a-f]+ \[correct\]/);
+    for (const words of ["Brack", "Tolva", "VA", "IA", "MW"]) expect(text).toContain(words);
+    expect(text).toMatch(/Resolution of fractional second time stamp: 1000000/);
+    expect(text).toMatch(/Number of PMU blocks included in the frame: 2/);
+    expect(text).toMatch(/Rate of transmission: 60/);
+    expect(text).toMatch(/Nominal line frequency: 60Hz/);
+    expect(text).toMatch(/Nominal line frequency: 50Hz/);
+    expect(text).not.toMatch(/Malformed/i);
+  });
+
+  for (const phasorsArePolar of [false, true]) {
+    for (const phasorsAreFloat of [false, true]) {
+      for (const frequencyIsFloat of [false, true]) {
+        const name = `${phasorsArePolar ? "polar" : "rectangular"}-${phasorsAreFloat ? "float" : "int"}-${frequencyIsFloat ? "float" : "int"}`;
+        it(`data, ${name}: the same phasors, frequency and status`, () => {
+          const config = stream(unit({ phasorsArePolar, phasorsAreFloat, frequencyIsFloat }));
+          const phasors = [132_400, -4_210, -388.5, 120];
+          const data = { stat: 0x2800, phasors, frequencyHz: 59.964, rocofHzPerS: -0.25, analogs: [88.5], digitals: [2] };
+          const text = dissected(name, [encodeConfig(config, "configuration-2", TIME_US), encodeData(config, TIME_US, [data])]);
+          expect(text).not.toMatch(/Malformed/i);
+          const shown = numbers(text, /Phasor #\d+: "[^"]*", +(-?[\d.]+)[VA] ∠ *(-?[\d.]+)°/g);
+          expect(shown.length).toBe(2);
+          for (const k of [0, 1]) {
+            const [re, im] = [phasors[2 * k]!, phasors[2 * k + 1]!];
+            const size = Math.hypot(re, im);
+            const perBit = [10, 0.5][k]!;
+            expect(Math.abs(shown[k]![0]! - size)).toBeLessThan(phasorsAreFloat ? size * 1e-6 + 0.01 : perBit);
+            expect(Math.abs(shown[k]![1]! - (Math.atan2(im, re) * 180) / Math.PI)).toBeLessThan(
+              phasorsAreFloat ? 0.01 : 0.01 + (perBit / size) * 57.3,
+            );
+          }
+          const [frequency] = numbers(
+            text,
+            frequencyIsFloat ? /Actual frequency value: ([\d.]+)/g : /actual frequency: ([\d.]+)Hz/g,
+          )[0]!;
+          expect(Math.abs(frequency! - 59.964)).toBeLessThan(0.001);
+          expect(numbers(text, /Rate of change of frequency: (-?[\d.]+)/g)).toEqual([[-0.25]]);
+          expect(numbers(text, /Analog value #1: "MW +", ([\d.]+)/g)).toEqual([[88.5]]);
+          expect(text).toContain("Digital status word #1: 0x0002");
+          expect(text).toContain("Time synchronized: Synchronization lost");
+          expect(text).toContain("Trigger detected: Trigger detected");
+          expect(text).toContain("Fraction of second (raw): 250000");
+        });
+      }
+    }
+  }
+
+  it("a command", () => {
+    expect(dissected("command", [encodeCommand(241, "data-on", TIME_US)])).toMatch(/Data transmission on/i);
+  });
+});
