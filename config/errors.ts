@@ -1,7 +1,6 @@
 /** What is wrong in a network file, each with its place. */
 
-export const configProblemCodes = ["unreadable", "syntax", "shape", "unknown-name", "duplicate-name", "inconsistent"] as const;
-export type ConfigProblemCode = (typeof configProblemCodes)[number];
+export type ConfigProblemCode = "unreadable" | "syntax" | "shape" | "unknown-name" | "duplicate-name" | "inconsistent";
 
 export interface ConfigProblem {
   readonly code: ConfigProblemCode;
@@ -14,7 +13,7 @@ export interface ConfigProblem {
   readonly whatToDo?: string;
 }
 
-export const problemText = (p: ConfigProblem): string =>
+const problemText = (p: ConfigProblem): string =>
   `${p.file}${p.line > 0 ? `:${p.line}:${p.column}` : ""}: expected ${p.expected}, found ${p.found}${p.whatToDo ? `. ${p.whatToDo}` : ""}`;
 
 /** The network file is refused; `problems` holds everything that was found wrong, in the order of the file. */

@@ -1,3 +1,3 @@
-export { DisturbanceTracker, type TrackerProblem } from "./disturbance-tracker.ts";
+export { DisturbanceTracker } from "./disturbance-tracker.ts";
 export type { DisturbanceEvent } from "./types.ts";
 export { watchDisturbances } from "./watch-disturbances.ts";

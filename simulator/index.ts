@@ -1,4 +1,3 @@
-export { checkedScenario, namedScenario, type Scenario, ScenarioError, scenarioNames } from "./scenario.ts";
-export { type ServeOptions, serveNetwork } from "./serve-network.ts";
-export type { Truth } from "./truth.ts";
+export { checkedScenario, namedScenario, ScenarioError, scenarioNames } from "./scenario.ts";
+export { serveNetwork } from "./serve-network.ts";
 export { writeScenario } from "./write-scenario.ts";

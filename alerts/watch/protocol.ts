@@ -2,11 +2,6 @@
 import type { FeedHealth } from "../../ingest/types.ts";
 import type { Location } from "../../pipeline/types.ts";
 
-export interface WatchedStation {
-  readonly id: string;
-  readonly name: string;
-}
-
 export interface WatchedLine {
   readonly id: string;
   readonly name: string;

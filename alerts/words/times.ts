@@ -8,9 +8,6 @@ export function utcTime(us: number): string {
   return `${pad(d.getUTCHours())}:${pad(d.getUTCMinutes())}:${pad(d.getUTCSeconds())} UTC`;
 }
 
-/** "2026-03-04" */
-export const utcDate = (us: number): string => new Date(us / 1000).toISOString().slice(0, 10);
-
 /** Minutes that the zone is ahead of UTC at that time. */
 export function offsetMinutes(us: number, timeZone: string): number {
   const name =

@@ -39,14 +39,6 @@ export const statWord = bits({
   triggerReason: [0, 4],
 });
 
-/** High byte of FRACSEC: clause 6.2.2, tables 3 and 4 (from memory). */
-export const timeQualityBits = bits({
-  leapSecondNegative: [6, 1],
-  leapSecondOccurred: [5, 1],
-  leapSecondPending: [4, 1],
-  timeQuality: [0, 4],
-});
-
 /** SOC and FRACSEC as whole µs since 1970 UTC. */
 export const timeUsOf = (socS: number, fracSec: number, timeBase: number): number =>
   socS * 1e6 + Math.round(((fracSec & 0xff_ffff) / timeBase) * 1e6);

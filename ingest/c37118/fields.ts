@@ -6,11 +6,8 @@ export interface FieldType {
   write(view: DataView, at: number, value: number): void;
 }
 
-export const u8: FieldType = { size: 1, read: (v, at) => v.getUint8(at), write: (v, at, x) => v.setUint8(at, x) };
 export const u16: FieldType = { size: 2, read: (v, at) => v.getUint16(at), write: (v, at, x) => v.setUint16(at, x) };
 export const u32: FieldType = { size: 4, read: (v, at) => v.getUint32(at), write: (v, at, x) => v.setUint32(at, x) };
-export const i16: FieldType = { size: 2, read: (v, at) => v.getInt16(at), write: (v, at, x) => v.setInt16(at, x) };
-export const f32: FieldType = { size: 4, read: (v, at) => v.getFloat32(at), write: (v, at, x) => v.setFloat32(at, x) };
 
 export interface Table<Name extends string> {
   readonly size: number;
