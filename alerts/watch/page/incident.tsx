@@ -4,7 +4,7 @@ import type { WatchedIncident, WatchedLine } from "../protocol.ts";
 import { day, local, utc } from "./clock.ts";
 import { caution, cautionBlock, chosen, feeds, network, refusal, send, serverNowMs } from "./live.ts";
 import { sightOf } from "./overview.tsx";
-import { Wire } from "./wire.tsx";
+import { placeOnWire, Wire } from "./wire.tsx";
 
 const STAGES: Readonly<Record<WatchedIncident["stage"], string>> = {
   noticed: "Noticed, being located",
@@ -84,7 +84,23 @@ function Drawing({ incident, line }: { incident: WatchedIncident; line: WatchedL
         <span>how likely, along the line</span>
         <b>{right}</b>
       </div>
-      <Wire line={line} incident={incident} sees={sees} size="incident" />
+      <div class="wire-with-figures">
+        {location?.pieces.map((piece, k) => (
+          <span
+            key={piece.lowKm}
+            class={`figures ${k === 0 ? "likelier" : ""}`}
+            style={{ left: `${placeOnWire((piece.lowKm + piece.highKm) / 2, line.lengthKm)}%` }}
+          >
+            {piece.lowKm.toFixed(1)}-{piece.highKm.toFixed(1)} km
+            {piece.towers && (
+              <span>
+                towers {piece.towers.from}-{piece.towers.to}
+              </span>
+            )}
+          </span>
+        ))}
+        <Wire line={line} incident={incident} sees={sees} size="incident" />
+      </div>
       {location && (
         <dl class="facts">
           <Fact

@@ -49,6 +49,7 @@ function hear(message: ToPage): void {
   }
   heardAtMs = performance.now();
   serverAtMs = message.serverTimeUs / 1000;
+  serverNowMs.value = serverAtMs;
   silentS.value = 0;
   isConnected.value = true;
   if (message.kind === "hello") {

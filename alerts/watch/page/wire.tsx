@@ -49,6 +49,10 @@ export function Wire({ line, incident, sees, size }: WireProps) {
   );
 }
 
+/** Per cent of the drawing's width at which a place lies, held away from the edges so that a label stays inside. */
+export const placeOnWire = (km: number, lengthKm: number): number =>
+  Math.min(90, Math.max(10, (100 * (POST + (km / lengthKm) * (WIDTH - 2 * POST))) / WIDTH));
+
 /** In words what the drawing shows: its twin for those who do not see it. */
 function describe(line: WatchedLine, incident: WatchedIncident | undefined, sees: readonly boolean[]): string {
   const blind = line.ends.filter((_, e) => !sees[e]).map((end) => end.stationName);
