@@ -46,7 +46,22 @@ export function resolveNetwork(file: NetworkFile, report: Report): Network {
         line.parallel.lineId,
         lines.map((l) => l.id),
       );
+    else if (line.parallel && partner) {
+      const { z0m } = line.parallel;
+      const back = partner.parallel;
+      const isMutual = back?.lineId === line.id && back.z0m.re === z0m.re && back.z0m.im === z0m.im;
+      const expected = `the same coupling on both lines: parallel: { line: ${line.id}, z0m: [${z0m.re}, ${z0m.im}] } on ${partner.id}`;
+      if (partner === line) report("inconsistent", ["lines", k, "parallel", "line"], "another line", `"${line.id}" itself`);
+      else if (!isMutual)
+        report(
+          "inconsistent",
+          ["lines", k, "parallel"],
+          expected,
+          back ? `parallel: { line: ${back.lineId}, z0m: [${back.z0m.re}, ${back.z0m.im}] } there` : "none there",
+        );
+    }
   });
+  refuseSharedCurrents(lines, report);
   return {
     name: file.name,
     frequencyHz: file.frequencyHz,
@@ -58,6 +73,31 @@ export function resolveNetwork(file: NetworkFile, report: Report): Network {
     channels: file.channels,
     ...(file.patrolCaution ? { patrolCaution: file.patrolCaution } : {}),
   };
+}
+
+/** Two lines may share a voltage transformer on their bus; a current belongs to one of them. */
+function refuseSharedCurrents(lines: readonly Line[], report: Report): void {
+  const takenBy = new Map<string, string>();
+  lines.forEach((line, k) => {
+    for (const { id, index, measured } of line.terminals) {
+      for (const role of ["IA", "IB", "IC"] as const) {
+        if (!measured) continue;
+        const channel = measured.channels[role];
+        const key = JSON.stringify([measured.feedId, measured.unitIdCode, channel]);
+        const other = takenBy.get(key);
+        if (other !== undefined && other !== id) {
+          report(
+            "inconsistent",
+            ["lines", k, "terminals", index],
+            `a current of its own for ${role}`,
+            `"${channel}" of feed ${measured.feedId}, unit ${measured.unitIdCode}, which is the current of ${other}`,
+          );
+          break;
+        }
+        takenBy.set(key, id);
+      }
+    }
+  });
 }
 
 const stationOf = ({ id, name, latitude, longitude }: NetworkFile["stations"][number]): Station => ({

@@ -1,5 +1,6 @@
 /** What a network file may hold. `networkJsonSchema` gives the same to editors. */
 import { z } from "zod";
+import { parseAddress } from "./address.ts";
 import { channelRoles } from "./model.ts";
 
 const id = z
@@ -112,7 +113,10 @@ export const networkSchema = z.strictObject({
     .array(
       z.strictObject({
         id,
-        address: z.string().regex(/^tcp:\/\/(\[[0-9a-fA-F:.]+\]|[^:/\s]+):\d{1,5}$/, "an address such as tcp://10.1.2.3:4712"),
+        address: z
+          .string()
+          .refine((text) => parseAddress(text) !== undefined, "an address such as tcp://10.1.2.3:4712")
+          .describe("tcp://host:port"),
         idCode: z.int().min(1).max(65534),
         class: z.enum(["P", "M"]),
         reportingRateHz: positive.max(240),

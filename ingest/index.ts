@@ -1,4 +1,5 @@
 export * from "./c37118/index.ts";
 export { type OpenFeeds, openFeeds } from "./open-feeds.ts";
+export { RecordingError, recordingErrorCodes } from "./recording-error.ts";
 export { RecordingWriter, recordingName } from "./recording-writer.ts";
-export { RecordingError, recordingErrorCodes, replayRecordings } from "./replay.ts";
+export { replayRecordings } from "./replay.ts";

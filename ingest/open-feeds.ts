@@ -3,10 +3,13 @@ import type { Logger } from "pino";
 import { BehaviorSubject, type Observable, Subject } from "rxjs";
 import type { Network } from "../config/index.ts";
 import { RecordingWriter } from "./recording-writer.ts";
+import type { TcpFeedEvents } from "./tcp-feed.ts";
 import { TcpFeed } from "./tcp-feed.ts";
 import type { FeedHealth, FrameBlock } from "./types.ts";
 
 const TICK_MS = 250;
+/** Counts are told at least this often; a state that changed, at the next tick. */
+const TELL_EVERY_TICKS = 4;
 /** A defect that repeats is logged once in this time, with its count. */
 const LOG_EVERY_US = 60e6;
 
@@ -35,13 +38,12 @@ export function openFeeds(
   const blocks = new Subject<FrameBlock>();
   const writers: RecordingWriter[] = [];
   const health = new BehaviorSubject<readonly FeedHealth[]>([]);
-  let isTelling = false;
-  const tell = () => {
-    isTelling = false;
-    health.next(feeds.map((feed) => feed.health()));
-  };
+  let isNews = true;
+  let ticks = 0;
   const feeds: TcpFeed[] = network.feeds.map((feed) => {
-    const writer = recordTo === undefined ? undefined : new RecordingWriter(recordTo, feed.id);
+    const feedLog = log.child({ feed: feed.id });
+    const writer =
+      recordTo === undefined ? undefined : new RecordingWriter(recordTo, feed.id, "append", (words) => feedLog.error(words));
     if (writer) writers.push(writer);
     return new TcpFeed(
       feed,
@@ -49,12 +51,10 @@ export function openFeeds(
       {
         onBlock: (block) => blocks.next(block),
         onState: () => {
-          // However many feeds change in one turn, it is told once.
-          if (!isTelling) queueMicrotask(tell);
-          isTelling = true;
+          isNews = true;
         },
         ...(writer ? { onFrame: (bytes: Uint8Array, at: number, size: number) => writer.write(bytes, at, size) } : {}),
-        onLog: sparingly(log.child({ feed: feed.id }), now),
+        onLog: sparingly(feedLog, now),
       },
       now,
       random,
@@ -62,7 +62,9 @@ export function openFeeds(
   });
   const look = () => {
     for (const feed of feeds) feed.tick();
-    tell();
+    if (!isNews && ticks++ % TELL_EVERY_TICKS !== 0) return;
+    isNews = false;
+    health.next(feeds.map((feed) => feed.health()));
   };
   look();
   const timer = setInterval(look, TICK_MS);
@@ -71,28 +73,26 @@ export function openFeeds(
     health: health.asObservable(),
     async stop() {
       clearInterval(timer);
-      for (const feed of feeds) feed.stop();
+      await Promise.all(feeds.map((feed) => feed.stop()));
       blocks.complete();
       health.complete();
-      await Promise.all(writers.splice(0).map((writer) => writer.close()));
+      // A recording that failed has been told when it happened; it keeps nobody from stopping.
+      await Promise.allSettled(writers.splice(0).map((writer) => writer.close()));
     },
   };
 }
 
-/** Logs a state at once; a defect's code at once the first time, then at most once a minute with how many there were. */
-function sparingly(log: Logger, now: () => number) {
+/** Logs each code at once the first time, then at most once a minute with how many alike there were: a feed that flaps fills no log. */
+function sparingly(log: Logger, now: () => number): TcpFeedEvents["onLog"] {
   const seen = new Map<string, { sinceUs: number; more: number }>();
-  return (level: "info" | "warn", words: string, detail?: { code: string }) => {
-    if (!detail) {
-      log[level](words);
-      return;
-    }
-    const last = seen.get(detail.code);
+  return (level, words, code) => {
+    const last = seen.get(code);
     if (last && now() - last.sinceUs < LOG_EVERY_US) {
       last.more++;
       return;
     }
-    log[level]({ defect: detail.code, ...(last && last.more > 0 ? { alike: last.more } : {}) }, words);
-    seen.set(detail.code, { sinceUs: now(), more: 0 });
+    const alike = last && last.more > 0 ? { alike: last.more } : {};
+    log[level](code === "live" ? alike : { defect: code, ...alike }, words);
+    seen.set(code, { sinceUs: now(), more: 0 });
   };
 }

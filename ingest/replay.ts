@@ -3,29 +3,11 @@ import { closeSync, openSync, readSync } from "node:fs";
 import type { Logger } from "pino";
 import type { FeedConfig, Network } from "../config/index.ts";
 import { type FrameDefect, Framer, timeUsOf, typeOf } from "./c37118/index.ts";
+import { RecordingError } from "./recording-error.ts";
 import { bindingProblems, StreamReader } from "./stream-reader.ts";
 import type { FrameBlock } from "./types.ts";
 
 const CHUNK_BYTES = 64 * 1024;
-
-export const recordingErrorCodes = [
-  "unreadable",
-  "unknown-feed",
-  "no-configuration",
-  "wrong-id-code",
-  "unknown-channel",
-] as const;
-export type RecordingErrorCode = (typeof recordingErrorCodes)[number];
-
-/** A recording that does not fit the feed it is given for. */
-export class RecordingError extends Error {
-  readonly code: RecordingErrorCode;
-  constructor(code: RecordingErrorCode, words: string, cause?: unknown) {
-    super(words, cause === undefined ? undefined : { cause });
-    this.name = "RecordingError";
-    this.code = code;
-  }
-}
 
 /**
  * @param files  path of each feed's recording
@@ -60,10 +42,12 @@ class Track {
   nextTimeUs = Number.POSITIVE_INFINITY;
   readonly #network: Network;
   readonly #path: string;
+  readonly #log: Logger;
   readonly #file: number;
   readonly #reader: StreamReader;
   readonly #framer: Framer;
   readonly #waiting: Buffer[] = [];
+  readonly #defects = new Map<FrameDefect, number>();
   #slot = -1;
   #isAtEnd = false;
   #timeBase = 1_000_000;
@@ -71,15 +55,16 @@ class Track {
   constructor(network: Network, feed: FeedConfig, path: string, log: Logger) {
     this.#network = network;
     this.#path = path;
+    this.#log = log;
     try {
       this.#file = openSync(path, "r");
     } catch (cause) {
       throw new RecordingError("unreadable", `${path}: cannot be read: ${(cause as Error).message}`, cause);
     }
-    const told = new Set<string>();
     const onDefect = (code: FrameDefect, words: string) => {
-      if (!told.has(code)) log.warn({ feed: feed.id, file: path, defect: code }, words);
-      told.add(code);
+      const count = (this.#defects.get(code) ?? 0) + 1;
+      this.#defects.set(code, count);
+      if (count === 1) log.warn({ feed: feed.id, file: path, defect: code }, words);
     };
     this.#reader = new StreamReader(feed, {
       onConfiguration: (config) => {
@@ -131,6 +116,10 @@ class Track {
 
   close(): void {
     closeSync(this.#file);
+    if (this.#defects.size === 0) return;
+    const { feed, frames, missingFrames } = this.#reader;
+    const defects = Object.fromEntries(this.#defects);
+    this.#log.warn({ feed: feed.id, file: this.#path, frames, missingFrames, defects }, "recording read, with defects");
   }
 
   /** Feeds everything before the next data frame to the reader, and notes that frame's time. */

@@ -39,6 +39,8 @@ export class StreamReader {
   missingFrames = 0;
   ring: WritableRing | undefined;
   config: StreamConfig | undefined;
+  /** Bytes skipped since the last whole frame. */
+  #skippedBytes = 0;
   readonly #framer: Framer;
   readonly #events: StreamEvents;
   #configurationBytes: Buffer | undefined;
@@ -50,8 +52,10 @@ export class StreamReader {
     this.#events = events;
     this.#framer = new Framer({
       frame: (bytes, at, size) => this.#take(bytes, at, size),
-      defect: (code, offset, skipped) =>
-        this.#defect(code, `${skipped} byte${skipped === 1 ? "" : "s"} skipped at byte ${offset} of the stream`),
+      defect: (code, offset, skipped) => {
+        this.#skippedBytes += skipped;
+        this.#defect(code, `${skipped} byte${skipped === 1 ? "" : "s"} skipped at byte ${offset} of the stream`);
+      },
     });
     this.#framer.largestFrameBytes = LARGEST_BEFORE_CONFIGURATION;
   }
@@ -63,9 +67,16 @@ export class StreamReader {
     this.#framer.push(chunk);
   }
 
-  /** The connection or file ended. */
+  /** The connection or file ended; the next bytes begin a new one, whose configuration may be larger. */
   end(): void {
     this.#framer.end();
+    this.#framer.largestFrameBytes = LARGEST_BEFORE_CONFIGURATION;
+    this.#skippedBytes = 0;
+  }
+
+  /** More bytes than two of the largest frames have gone by without one: this is no such stream. */
+  get isHopeless(): boolean {
+    return this.#skippedBytes > 2 * this.#framer.largestFrameBytes;
   }
 
   #defect(code: FrameDefect, words: string): void {
@@ -74,6 +85,7 @@ export class StreamReader {
   }
 
   #take(bytes: Uint8Array, at: number, size: number): void {
+    this.#skippedBytes = 0;
     const type = typeOf(bytes[at + 1]!);
     const idCode = (bytes[at + 4]! << 8) | bytes[at + 5]!;
     if (idCode !== this.feed.idCode) {
@@ -83,16 +95,17 @@ export class StreamReader {
       );
       return;
     }
-    if (type === "data") {
-      if (!this.#takeData(bytes, at, size)) return;
-    } else if (type === "configuration-2" && !this.#takeConfiguration(bytes, at, size)) return;
-    this.#events.onFrame?.(bytes, at, size);
+    if (type === "data") this.#takeData(bytes, at, size);
+    else if (type === "configuration-2" && !this.#takeConfiguration(bytes, at, size)) return;
+    // Also a frame that came twice or late: a replay then meets what the live feed met.
+    if (this.config) this.#events.onFrame?.(bytes, at, size);
   }
 
   #takeConfiguration(bytes: Uint8Array, at: number, size: number): boolean {
     // The frame's own time and CRC differ each time it is sent; what it says is between them.
     const said = Buffer.from(bytes.subarray(at + 14, at + size - 2));
     if (this.config && this.#configurationBytes?.equals(said)) {
+      this.#limitFrames(size);
       this.#events.onConfiguration(this.config);
       return true;
     }
@@ -105,20 +118,25 @@ export class StreamReader {
     }
     this.#configurationBytes = said;
     this.ring = new WritableRing(this.feed.id, this.config);
-    this.#framer.largestFrameBytes = Math.max(dataFrameBytes(this.config), 2 * size, 1024);
+    this.#limitFrames(size);
     this.#events.onConfiguration(this.config);
     return true;
   }
 
-  #takeData(bytes: Uint8Array, at: number, size: number): boolean {
+  /** A false start cannot hold the queue for long: nothing larger than what this stream sends is waited for. */
+  #limitFrames(configurationBytes: number): void {
+    this.#framer.largestFrameBytes = Math.max(dataFrameBytes(this.config!), 2 * configurationBytes, 1024);
+  }
+
+  #takeData(bytes: Uint8Array, at: number, size: number): void {
     const { ring } = this;
     if (!ring) {
       this.#defect("no-configuration-yet", "data frame before the first configuration frame");
-      return false;
+      return;
     }
     if (size !== ring.plan.frameBytes) {
       this.#defect("size-unlike-configuration", `data frame of ${size} bytes, the configuration makes ${ring.plan.frameBytes}`);
-      return false;
+      return;
     }
     if (this.#viewed?.bytes !== bytes)
       this.#viewed = { bytes, view: new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength) };
@@ -128,14 +146,13 @@ export class StreamReader {
       this.#defect("time-out-of-bounds", `time tag of slot ${ring.lastSlot} is far from the last one`);
     else if (placement === "duplicate") this.#defect("duplicate", "frame came twice");
     else if (placement === "too-late") this.#defect("late", "frame came after its row was given to a newer one");
-    if (placement !== "new") return false;
+    if (placement !== "new") return;
     this.frames++;
     if (before >= 0 && ring.newestSlot >= before) {
       if (ring.lastSlot > before) this.missingFrames += ring.lastSlot - before - 1;
       else this.missingFrames = Math.max(0, this.missingFrames - 1); // a late one fell into its gap
     }
     this.#events.onRow(ring.lastSlot);
-    return true;
   }
 }
 

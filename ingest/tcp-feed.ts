@@ -1,29 +1,40 @@
 /**
  * A unit that is called over TCP: connect, stop the data, ask for the configuration, start the data; start again when it breaks. One object a feed; a
  * tick from outside looks at its time-outs, so that two thousand feeds need one timer.
+ *
+ * What the connection does and what people are shown are kept apart: a feed that failed stays "stale" or "refused" with its reason while it is tried
+ * again, until its configuration has come. Otherwise its reason would flicker away at each try.
  */
 import { connect, type Socket } from "node:net";
-import type { FeedConfig, Network } from "../config/index.ts";
+import { type FeedConfig, type Network, parseAddress } from "../config/index.ts";
 import { encodeCommand, type FrameDefect } from "./c37118/index.ts";
+import type { FeedTrouble } from "./feed-trouble.ts";
 import { bindingProblems, StreamReader } from "./stream-reader.ts";
 import type { FeedHealth, FeedState, FrameBlock } from "./types.ts";
 
 /** All in µs of the injected clock. */
 const CONNECT_TIMEOUT_US = 5e6;
 const CONFIGURATION_TIMEOUT_US = 5e6;
-/** Frames that are due but did not come for this long make a feed stale; twice as long and the connection is given up. */
+/** Frames that are due but did not come for this long make a feed stale; after `DEAD_US` the connection is given up. */
 const STALE_US = 2e6;
 const DEAD_US = 10e6;
 const FIRST_RETRY_US = 0.25e6;
 const LONGEST_RETRY_US = 15e6;
+/** Live for this long: the next loss is a new one, and is retried quickly again. */
+const SETTLED_US = 10e6;
+/** What a stopping feed waits for its last command to leave. */
+const FAREWELL_MS = 250;
 
 export interface TcpFeedEvents {
   readonly onBlock: (block: FrameBlock) => void;
   readonly onFrame?: (bytes: Uint8Array, at: number, size: number) => void;
   /** The state or its reason changed. */
   readonly onState: () => void;
-  readonly onLog: (level: "info" | "warn", words: string, detail?: { code: FrameDefect }) => void;
+  readonly onLog: (level: "info" | "warn", words: string, code: FeedTrouble | FrameDefect | "live") => void;
 }
+
+/** What the connection waits for. */
+type Phase = "nothing" | "connection" | "configuration" | "frames";
 
 export class TcpFeed {
   readonly #feed: FeedConfig;
@@ -33,11 +44,15 @@ export class TcpFeed {
   readonly #events: TcpFeedEvents;
   readonly #reader: StreamReader;
   #socket: Socket | undefined;
+  #phase: Phase = "nothing";
+  #phaseSinceUs: number;
   #state: FeedState = "connecting";
   #reason = "not yet connected";
-  /** A reason that outlives reconnecting: wrong IDCODE, channels not found. */
-  #misfit = "";
-  #sinceUs: number;
+  /** Frames of another IDCODE since the last good one, in words. */
+  #strangers = "";
+  /** What works less well although frames come. */
+  #remark = "";
+  #hasFailed = false;
   #nextTryUs = 0;
   #tries = 0;
   #newestArrivedUs: number | undefined;
@@ -51,7 +66,7 @@ export class TcpFeed {
     this.#events = events;
     this.#now = now;
     this.#random = random;
-    this.#sinceUs = now();
+    this.#phaseSinceUs = now();
     this.#reader = new StreamReader(feed, {
       ...(events.onFrame ? { onFrame: events.onFrame } : {}),
       onConfiguration: () => this.#configured(),
@@ -60,8 +75,8 @@ export class TcpFeed {
         if (slot > this.#last) this.#last = slot;
       },
       onDefect: (code, words) => {
-        if (code === "wrong-id-code") this.#misfit = words;
-        this.#events.onLog("warn", words, { code });
+        if (code === "wrong-id-code") this.#strangers = words;
+        this.#events.onLog("warn", words, code);
       },
     });
   }
@@ -70,24 +85,26 @@ export class TcpFeed {
   tick(): void {
     if (this.#isStopped) return;
     const now = this.#now();
-    if (!this.#socket) {
-      if (now >= this.#nextTryUs) this.#connect();
-      return;
-    }
-    const periodUs = this.#reader.ring?.periodUs ?? 1e6 / this.#feed.reportingRateHz;
-    if (this.#state === "connecting" && now - this.#sinceUs > CONNECT_TIMEOUT_US)
-      this.#drop(`no answer from ${this.#feed.address} within ${CONNECT_TIMEOUT_US / 1e6} s`);
-    else if (this.#state === "configuring" && now - this.#sinceUs > CONFIGURATION_TIMEOUT_US)
-      this.#drop("connected, but no configuration frame came: is it a C37.118.2 unit that answers commands?");
-    else if (
-      this.#newestArrivedUs !== undefined &&
-      (this.#state === "live" || this.#state === "stale" || this.#state === "refused")
-    ) {
-      const silentUs = now - Math.max(this.#newestArrivedUs, this.#sinceUs);
-      if (silentUs > Math.max(DEAD_US, 4 * periodUs))
-        this.#drop(`no frame for ${Math.round(silentUs / 1e6)} s: connection given up`);
-      else if (silentUs > Math.max(STALE_US, 3 * periodUs) && this.#state === "live")
-        this.#enter("stale", "connected, but no frame comes");
+    const phaseUs = now - this.#phaseSinceUs;
+    switch (this.#phase) {
+      case "nothing":
+        if (now >= this.#nextTryUs) this.#connect();
+        return;
+      case "connection":
+        if (phaseUs > CONNECT_TIMEOUT_US)
+          this.#drop("no-answer", `no answer from ${this.#feed.address} within ${CONNECT_TIMEOUT_US / 1e6} s`);
+        return;
+      case "configuration":
+        if (phaseUs <= CONFIGURATION_TIMEOUT_US) return;
+        if (this.#strangers) this.#drop("wrong-id-code", this.#strangers, "refused");
+        else
+          this.#drop(
+            "no-configuration",
+            "connected, but no configuration frame came: is it a C37.118.2 unit that answers commands?",
+          );
+        return;
+      default:
+        this.#lookForSilence(now, phaseUs);
     }
   }
 
@@ -97,7 +114,7 @@ export class TcpFeed {
     return {
       feedId: this.#feed.id,
       state: this.#state,
-      reason: this.#state === "live" ? this.#misfit : this.#reason,
+      reason: this.#state === "live" ? this.#remark : this.#reason,
       frames,
       missingFrames,
       defects: Object.fromEntries(Object.entries(defects).filter(([, count]) => count > 0)),
@@ -106,34 +123,51 @@ export class TcpFeed {
     };
   }
 
-  /** May be called twice and at any moment. */
-  stop(): void {
+  /** May be called twice and at any moment. Resolves when the socket is closed. */
+  stop(): Promise<void> {
     this.#isStopped = true;
     const socket = this.#socket;
     this.#socket = undefined;
-    if (!socket) return;
+    if (!socket) return Promise.resolve();
     socket.removeAllListeners("data");
-    if (socket.writable) socket.end(encodeCommand(this.#feed.idCode, "data-off", this.#now()));
-    socket.destroySoon();
+    socket.resume();
+    if (socket.connecting) socket.destroy();
+    else socket.end(encodeCommand(this.#feed.idCode, "data-off", this.#now()));
+    return new Promise((done) => {
+      const late = setTimeout(() => socket.destroy(), FAREWELL_MS);
+      socket.once("finish", () => socket.destroy());
+      socket.once("close", () => {
+        clearTimeout(late);
+        done();
+      });
+    });
   }
 
   #connect(): void {
-    const { hostname, port } = new URL(this.#feed.address);
-    const socket = connect({ host: hostname.replace(/^\[|\]$/g, ""), port: Number(port) });
+    const address = parseAddress(this.#feed.address);
+    if (!address) {
+      this.#drop("bad-address", `expected an address such as tcp://10.1.2.3:4712, found ${this.#feed.address}`, "refused");
+      this.#nextTryUs = Number.POSITIVE_INFINITY;
+      return;
+    }
+    const socket = connect(address);
     this.#socket = socket;
     socket.setNoDelay(true);
-    this.#enter("connecting", `connecting to ${this.#feed.address}`);
+    this.#await("connection", "connecting", `connecting to ${this.#feed.address}`);
     socket.on("connect", () => {
-      this.#enter("configuring", "connected, waiting for the configuration frame");
+      if (this.#socket !== socket) return;
+      this.#await("configuration", "configuring", "connected, waiting for the configuration frame");
       socket.write(encodeCommand(this.#feed.idCode, "data-off", this.#now()));
       socket.write(encodeCommand(this.#feed.idCode, "send-configuration-2", this.#now()));
     });
-    socket.on("data", (chunk) => this.#read(chunk));
+    socket.on("data", (chunk) => {
+      if (this.#socket === socket) this.#read(chunk);
+    });
     socket.on("error", (error) => {
-      if (this.#socket === socket) this.#drop(`${this.#feed.address} cannot be reached: ${wordsOf(error)}`);
+      if (this.#socket === socket) this.#drop("unreachable", `${this.#feed.address} cannot be reached: ${wordsOf(error)}`);
     });
     socket.on("close", () => {
-      if (this.#socket === socket) this.#drop("the unit closed the connection");
+      if (this.#socket === socket) this.#drop("closed", "the unit closed the connection");
     });
   }
 
@@ -141,47 +175,76 @@ export class TcpFeed {
     const arrivedUs = this.#now();
     this.#first = -1;
     this.#last = -1;
-    const misfitBefore = this.#misfit;
     this.#reader.push(chunk, arrivedUs);
-    if (this.#misfit !== misfitBefore && this.#state === "configuring") this.#enter("refused", this.#misfit);
+    if (this.#reader.isHopeless) {
+      this.#drop("not-synchrophasor", `${this.#feed.address} sends bytes in which no C37.118.2 frame can be found`);
+      return;
+    }
+    if (this.#strangers && this.#phase === "configuration") this.#show("refused", this.#strangers, "wrong-id-code");
     if (this.#last < 0) return;
     this.#newestArrivedUs = arrivedUs;
-    if (this.#state === "stale") this.#enter("live", "");
+    this.#strangers = "";
+    if (this.#state === "stale") this.#show("live", "", "live");
     this.#events.onBlock({ feedId: this.#feed.id, ring: this.#reader.ring!, firstSlot: this.#first, lastSlot: this.#last });
   }
 
   #configured(): void {
     const config = this.#reader.config!;
     const { problems, terminals } = bindingProblems(this.#network, this.#feed.id, config);
-    this.#misfit = problems.join("; ");
+    const remarks: [FeedTrouble, string][] = problems.map((words) => ["unknown-channel", words]);
     if (Math.abs(config.reportingRateHz - this.#feed.reportingRateHz) > 1e-6) {
       const words = `the stream sends ${config.reportingRateHz} frames/s, the network file says ${this.#feed.reportingRateHz}: the measuring window is assumed for the file's rate`;
-      this.#misfit = [this.#misfit, words].filter((x) => x).join("; ");
+      remarks.push(["unlike-rate", words]);
     }
-    if (this.#misfit) this.#events.onLog("warn", this.#misfit);
-    this.#tries = 0;
-    this.#newestArrivedUs = this.#now();
-    if (terminals > 0 && problems.length === terminals) this.#enter("refused", this.#misfit);
-    else this.#enter("live", "");
+    this.#remark = remarks.map(([, words]) => words).join("; ");
+    this.#strangers = "";
+    this.#phase = "frames";
+    this.#phaseSinceUs = this.#now();
+    if (terminals > 0 && problems.length === terminals) this.#show("refused", this.#remark, "unknown-channel");
+    else {
+      for (const [code, words] of remarks) this.#events.onLog("warn", words, code);
+      this.#show("live", "", "live");
+    }
     this.#socket?.write(encodeCommand(this.#feed.idCode, "data-on", this.#now()));
   }
 
-  #enter(state: FeedState, reason: string): void {
+  #lookForSilence(now: number, phaseUs: number): void {
+    const periodUs = this.#reader.ring?.periodUs ?? 1e6 / this.#feed.reportingRateHz;
+    const silentUs = Math.min(phaseUs, now - (this.#newestArrivedUs ?? Number.NEGATIVE_INFINITY));
+    if (silentUs > Math.max(DEAD_US, 4 * periodUs)) {
+      const seconds = Math.round(silentUs / 1e6);
+      if (this.#strangers) this.#drop("wrong-id-code", this.#strangers, "refused");
+      else this.#drop("silent", `connected, but no frame came for ${seconds} s: the connection was given up and is tried again`);
+    } else if (silentUs > Math.max(STALE_US, 3 * periodUs) && this.#state === "live")
+      this.#show("stale", this.#strangers || "connected, but no frame comes", "silent");
+    else if (phaseUs > SETTLED_US && this.#state === "live") this.#tries = 0;
+  }
+
+  /** A step of connecting; shown only on the first try. */
+  #await(phase: Phase, state: FeedState, reason: string): void {
+    this.#phase = phase;
+    this.#phaseSinceUs = this.#now();
+    if (!this.#hasFailed) this.#show(state, reason);
+  }
+
+  #show(state: FeedState, reason: string, code?: FeedTrouble | "live"): void {
     const isNews = state !== this.#state || reason !== this.#reason;
     this.#state = state;
     this.#reason = reason;
-    this.#sinceUs = this.#now();
-    if (isNews) this.#events.onState();
-    if (isNews && state !== "connecting" && state !== "configuring")
-      this.#events.onLog(state === "live" ? "info" : "warn", state === "live" ? "live" : reason);
+    this.#hasFailed = state === "stale" || state === "refused";
+    if (!isNews) return;
+    this.#events.onState();
+    if (code) this.#events.onLog(state === "live" ? "info" : "warn", state === "live" ? "live" : reason, code);
   }
 
-  #drop(reason: string): void {
+  #drop(code: FeedTrouble, reason: string, state: "stale" | "refused" = "stale"): void {
     const socket = this.#socket;
     this.#socket = undefined;
     socket?.destroy();
     this.#reader.end();
-    this.#enter("stale", reason);
+    this.#phase = "nothing";
+    this.#strangers = "";
+    this.#show(state, reason, code);
     const waitUs = Math.min(LONGEST_RETRY_US, FIRST_RETRY_US * 2 ** this.#tries);
     this.#tries = Math.min(this.#tries + 1, 10);
     this.#nextTryUs = this.#now() + waitUs * (0.5 + this.#random() / 2);

@@ -63,7 +63,7 @@ export type FeedState = (typeof feedStates)[number];
 export interface FeedHealth {
   readonly feedId: string;
   readonly state: FeedState;
-  /** Why it is not live, in words for an operator: what was expected, what was found, what to do. Empty when live. */
+  /** Why it is not live, in words for an operator: what was expected, what was found, what to do. When live: what works less well, mostly empty. */
   readonly reason: string;
   readonly frames: number;
   readonly missingFrames: number;

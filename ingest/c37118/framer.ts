@@ -41,8 +41,10 @@ export interface FramerSink {
  */
 export class Framer {
   readonly #sink: FramerSink;
+  /** The unfinished bytes are `#rest[#from..#to)`. */
   #rest = new Uint8Array(0);
-  #restLength = 0;
+  #from = 0;
+  #to = 0;
   #offset = 0;
   /** Size bound; lowered once the configuration is known. */
   largestFrameBytes = LARGEST_FRAME_BYTES;
@@ -53,15 +55,16 @@ export class Framer {
 
   push(chunk: Uint8Array): void {
     let used = 0;
-    while (this.#restLength > 0) {
+    while (this.#from < this.#to) {
       // Bring over only what the unfinished frame still lacks, and look again.
-      const look = lookAt(this.#rest, 0, this.#restLength, this.largestFrameBytes);
+      const look = lookAt(this.#rest, this.#from, this.#to, this.largestFrameBytes);
       if (look.kind !== "wait") {
-        this.#act(look, this.#rest, 0);
-        this.#drop(look.kind === "frame" ? look.bytes : look.skipBytes);
+        const at = this.#from;
+        this.#from += look.kind === "frame" ? look.bytes : look.skipBytes;
+        this.#act(look, this.#rest, at);
         continue;
       }
-      const lacking = Math.min(look.bytes - this.#restLength, chunk.length - used);
+      const lacking = Math.min(look.bytes - (this.#to - this.#from), chunk.length - used);
       if (lacking === 0) return;
       this.#append(chunk.subarray(used, used + lacking));
       used += lacking;
@@ -79,8 +82,9 @@ export class Framer {
 
   /** The stream ended: what is left is a frame cut short. */
   end(): void {
-    if (this.#restLength > 0) this.#sink.defect("truncated", this.#offset, this.#restLength);
-    this.#restLength = 0;
+    if (this.#from < this.#to) this.#sink.defect("truncated", this.#offset, this.#to - this.#from);
+    this.#from = 0;
+    this.#to = 0;
   }
 
   #act(look: Exclude<Look, { kind: "wait" }>, bytes: Uint8Array, at: number): void {
@@ -94,18 +98,18 @@ export class Framer {
   }
 
   #append(piece: Uint8Array): void {
-    const length = this.#restLength + piece.length;
-    if (this.#rest.length < length) {
-      const larger = new Uint8Array(Math.max(length, 2 * this.#rest.length, 256));
-      larger.set(this.#rest.subarray(0, this.#restLength));
-      this.#rest = larger;
+    const kept = this.#to - this.#from;
+    if (this.#to + piece.length > this.#rest.length) {
+      // Moved to the front only when the end is reached, so that skipping byte by byte costs no copying.
+      const needed = kept + piece.length;
+      const next = needed > this.#rest.length ? new Uint8Array(Math.max(needed, 2 * this.#rest.length, 256)) : this.#rest;
+      if (next === this.#rest) next.copyWithin(0, this.#from, this.#to);
+      else next.set(this.#rest.subarray(this.#from, this.#to));
+      this.#rest = next;
+      this.#from = 0;
+      this.#to = kept;
     }
-    this.#rest.set(piece, this.#restLength);
-    this.#restLength = length;
-  }
-
-  #drop(bytes: number): void {
-    this.#rest.copyWithin(0, bytes, this.#restLength);
-    this.#restLength -= bytes;
+    this.#rest.set(piece, this.#to);
+    this.#to += piece.length;
   }
 }
