@@ -7,6 +7,7 @@ import {
   demoNetworkPath,
   loadNetwork,
   networkJsonSchema,
+  parseAddress,
   parseNetwork,
 } from "../../config/index.ts";
 
@@ -107,9 +108,59 @@ describe("a network file that is wrong is refused with its line and column", () 
       "400",
       undefined,
     ],
+    [
+      'address: "tcp://127.0.0.1:4713"',
+      'address: "tcp://127.0.0.1:99999"',
+      "shape",
+      "feeds[1].address: an address such as tcp://10.1.2.3:4712",
+      '"tcp://127.0.0.1:99999"',
+      undefined,
+    ],
+    [
+      "parallel: { line: tolva-quenby-2, z0m: [24.1, 79.0] }",
+      "parallel: { line: tolva-quenby-2, z0m: [24.1, 97.0] }",
+      "inconsistent",
+      "the same coupling on both lines: parallel: { line: tolva-quenby-1, z0m: [24.1, 97] } on tolva-quenby-2",
+      "parallel: { line: tolva-quenby-1, z0m: [24.1, 79] } there",
+      undefined,
+    ],
+    [
+      "parallel: { line: tolva-quenby-2,",
+      "parallel: { line: brack-tolva,",
+      "inconsistent",
+      "the same coupling on both lines: parallel: { line: tolva-quenby-1, z0m: [24.1, 79] } on brack-tolva",
+      "none there",
+      undefined,
+    ],
+    [
+      "parallel: { line: quenby-ister-2,",
+      "parallel: { line: quenby-ister-1,",
+      "inconsistent",
+      "another line",
+      '"quenby-ister-1" itself',
+      undefined,
+    ],
+    [
+      "- station: quenby\n        feed: quenby-ister-2-at-quenby",
+      "- station: quenby\n        feed: quenby-ister-1-at-quenby",
+      "inconsistent",
+      "a current of its own for IA",
+      '"IA" of feed quenby-ister-1-at-quenby, unit 107, which is the current of quenby-ister-1/quenby',
+      undefined,
+    ],
+    [
+      "- station: quenby\n        feed: tolva-quenby-1-at-quenby",
+      "- station: tolva\n        feed: tolva-quenby-1-at-quenby",
+      "duplicate-name",
+      "each terminal at another station",
+      "one twice",
+      undefined,
+    ],
   ])("%s -> %s", (from, to, code, expected, found, whatToDo) => {
     const problem = problemsOf(from, to)[0]!;
-    expect(problem).toMatchObject({ code, file: "net.yaml", expected, found, line: lineOf(from) });
+    // A terminal's own place is given as its first setting's, a list's as its first entry's: within a line of the slip.
+    expect(problem).toMatchObject({ code, file: "net.yaml", expected, found });
+    expect(Math.abs(problem.line - lineOf(from))).toBeLessThanOrEqual(code === "duplicate-name" ? 2 : 0);
     expect(problem.whatToDo).toBe(whatToDo);
     expect(problem.column).toBeGreaterThan(1);
   });
@@ -119,7 +170,32 @@ describe("a network file that is wrong is refused with its line and column", () 
     expect(problems.map((p) => [p.found, p.whatToDo])).toContainEqual(['"nominalVolt"', "Did you mean nominalKv?"]);
   });
   it("a line with neither, or both, kinds of constants", () => {
-    expect(problemsOf("    perKm:\n      r1Ohm: 0.062", "    perKm2:\n      r1Ohm: 0.062").length).toBeGreaterThan(0);
+    const given = "    uncertaintyPercent: { z1: 1, z0: 5 }\n    terminals:\n      - station: brack\n";
+    const total = "    total: { r1Ohm: 9.2, x1Ohm: 72, r0Ohm: 46, x0Ohm: 199 }\n";
+    expect(problemsOf(given, total + given)).toEqual([
+      {
+        code: "inconsistent",
+        file: "net.yaml",
+        line: lineOf(given),
+        column: 12,
+        expected: "either perKm or total",
+        found: "both",
+      },
+    ]);
+    const perKm = text.slice(text.indexOf("    perKm:"), text.indexOf(given));
+    expect(problemsOf(perKm, "")[0]).toMatchObject({ expected: "either perKm or total", found: "neither" });
+    expect(parseNetwork(text.replace(perKm, total), "net.yaml").lines[0]!.constants).toMatchObject({
+      z1: { re: 9.2, im: 72 },
+      z0: { re: 46, im: 199 },
+      b1: 0,
+    });
+  });
+  it("one channel for two phases", () => {
+    const channels = "feed: ister-nolde-at-ister\n        channels: { VA: UA, VB: UA }";
+    expect(problemsOf("feed: ister-nolde-at-ister", channels)[0]).toMatchObject({
+      code: "duplicate-name",
+      expected: "six different channels",
+    });
   });
   it("a slip in the YAML itself is told once, where it is", () => {
     const problems = problemsOf("lines:\n", "lines: [\n");
@@ -128,6 +204,11 @@ describe("a network file that is wrong is refused with its line and column", () 
   });
   it("a file that is not there", () => {
     expect(() => loadNetwork("/nowhere/net.yaml")).toThrow(/\/nowhere\/net\.yaml: expected a readable network file/);
+    try {
+      loadNetwork("/nowhere/net.yaml");
+    } catch (error) {
+      expect((error as ConfigError).problems).toMatchObject([{ code: "unreadable", line: 0, column: 0 }]);
+    }
   });
   it("everything that is wrong is told at once", () => {
     const both = text.replace("station: brack", "station: brak").replace("feed: ister-nolde-at-ister", "feed: nix");
@@ -156,6 +237,13 @@ it("prints a JSON Schema with every setting's name", () => {
   const schema = JSON.stringify(networkJsonSchema());
   for (const name of ["reportingRateHz", "z0m", "spanKm", "currentTransformer", "patrolCaution"])
     expect(schema).toContain(`"${name}"`);
+});
+
+it("reads addresses by name, IPv4 and IPv6, and nothing else", () => {
+  expect(parseAddress("tcp://unit-7.example:4712")).toEqual({ host: "unit-7.example", port: 4712 });
+  expect(parseAddress("tcp://[::1]:65535")).toEqual({ host: "::1", port: 65_535 });
+  for (const bad of ["tcp://a:0", "tcp://a:65536", "udp://a:1", "tcp://a", "tcp://a<b:1", "tcp://a:1/x", "a:1", ""])
+    expect(parseAddress(bad), bad).toBeUndefined();
 });
 
 describe("binding a terminal to a stream", () => {
