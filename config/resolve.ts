@@ -134,8 +134,10 @@ function resolveLine(line: LineFile, k: number, file: NetworkFile, report: Repor
       );
     return station;
   });
-  if (new Set(line.terminals.map((t) => t.station)).size < line.terminals.length)
-    report("duplicate-name", at("terminals"), "each terminal at another station", "one twice");
+  line.terminals.forEach((t, e) => {
+    if (line.terminals.findIndex((other) => other.station === t.station) < e)
+      report("duplicate-name", at("terminals", e, "station"), "each terminal at another station", `"${t.station}" again`);
+  });
   if (line.seriesCapacitor && line.seriesCapacitor.atKm > line.lengthKm) {
     report(
       "inconsistent",

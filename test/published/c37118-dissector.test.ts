@@ -7,7 +7,7 @@ import { mkdtempSync, rmSync, writeFileSync } from "node:fs";
 import { tmpdir } from "node:os";
 import { join } from "node:path";
 import { afterAll, describe, expect, it } from "vitest";
-import { encodeCommand, encodeConfig, encodeData, type StreamConfig, type UnitConfig } from "../../ingest/index.ts";
+import { encodeCommand, encodeConfig, encodeData, encodeHeader, type StreamConfig, type UnitConfig } from "../../ingest/index.ts";
 
 const folder = mkdtempSync(join(tmpdir(), "spanmark-dissector-"));
 afterAll(() => rmSync(folder, { recursive: true }));
@@ -133,7 +133,74 @@ describe("an independent dissector reads what our codec wrote", () => {
     }
   }
 
-  it("a command", () => {
-    expect(dissected("command", [encodeCommand(241, "data-on", TIME_US)])).toMatch(/Data transmission on/i);
+  it("data of four unlike units in one frame, each in its own format, at its own nominal frequency", () => {
+    const formats = [
+      { phasorsArePolar: false, phasorsAreFloat: true, frequencyIsFloat: true, analogsAreFloat: true },
+      { phasorsArePolar: true, phasorsAreFloat: true, frequencyIsFloat: false, analogsAreFloat: false },
+      { phasorsArePolar: false, phasorsAreFloat: false, frequencyIsFloat: true, analogsAreFloat: false },
+      { phasorsArePolar: true, phasorsAreFloat: false, frequencyIsFloat: false, analogsAreFloat: true },
+    ];
+    const config = stream(
+      ...formats.map((format, k) =>
+        unit({
+          ...format,
+          name: `Unit ${k}`,
+          idCode: 300 + k,
+          nominalHz: k % 2 ? 50 : 60,
+          phasors: Array.from({ length: 1 + k }, (_, n) => ({
+            name: `P${k}${n}`,
+            kind: n % 2 ? "current" : "voltage",
+            perBit: 2,
+          })),
+        }),
+      ),
+    );
+    // Whole numbers of bits, so that no format rounds what is sent: 3-4-5 triangles in steps of perBit.
+    const sent = config.units.map((u, k) => ({
+      stat: k,
+      phasors: u.phasors.flatMap((_, n) => [600 * (k + 1), -800 * (n + 1) * (k + 1)]),
+      frequencyHz: u.nominalHz + (k + 1) / 8,
+      rocofHzPerS: (k - 1) / 4,
+      analogs: [-1500 - k],
+      digitals: [0x8001 + k],
+    }));
+    const text = dissected("many", [encodeConfig(config, "configuration-2", TIME_US), encodeData(config, TIME_US, sent)]);
+    expect(text).not.toMatch(/Malformed/i);
+    const data = text.slice(text.indexOf("\nFrame 2:"));
+    const shown = numbers(data, /Phasor #\d+: "[^"]*", +(-?[\d.]+)[VA] ∠ *(-?[\d.]+)°/g);
+    const polar = sent.flatMap((u) =>
+      u.phasors.flatMap((re, n) =>
+        n % 2 ? [] : [[Math.hypot(re, u.phasors[n + 1]!), Math.atan2(u.phasors[n + 1]!, re)] as const],
+      ),
+    );
+    expect(shown.length).toBe(1 + 2 + 3 + 4);
+    for (const [n, [size, angle]] of polar.entries()) {
+      // Half a bit of an integer magnitude; 5e-5 rad of an integer angle; two decimals shown of either.
+      expect(Math.abs(shown[n]![0]! - size)).toBeLessThanOrEqual(1.01);
+      expect(Math.abs(shown[n]![1]! - (angle * 180) / Math.PI)).toBeLessThanOrEqual(0.0029 + 0.01);
+    }
+    expect(numbers(data, /(?:Actual frequency value|actual frequency): ([\d.]+)/g).flat()).toEqual(
+      sent.map((u) => u.frequencyHz),
+    );
+    expect(numbers(data, /Rate of change of frequency: (-?[\d.]+)/g).flat()).toEqual(sent.map((u) => u.rocofHzPerS));
+    expect(numbers(data, /Analog value #1: "MW +", (-?[\d.]+)/g).flat()).toEqual(sent.map((u) => u.analogs[0]));
+    for (const u of sent) expect(data).toContain(`Digital status word #1: 0x${u.digitals[0]!.toString(16)}`);
+  });
+
+  it("configuration 1, a header, and commands", () => {
+    const text = dissected("others", [
+      encodeConfig(stream(unit({})), "configuration-1", TIME_US),
+      encodeHeader(241, "Brack, bay 7", TIME_US),
+      encodeCommand(241, "data-off", TIME_US),
+      encodeCommand(241, "data-on", TIME_US),
+      encodeCommand(241, "send-configuration-2", TIME_US),
+    ]);
+    expect(text).not.toMatch(/Malformed/i);
+    expect(text.match(/Checksum: 0x[0-9a-f]+ \[correct\]/g)?.length).toBe(5);
+    expect(text).toMatch(/Configuration Frame 1/);
+    expect(text).toMatch(/Header Frame/);
+    expect(text).toMatch(/Data transmission off/i);
+    expect(text).toMatch(/Data transmission on/i);
+    expect(text).toMatch(/Send CFG-2 frame/i);
   });
 });
