@@ -1,4 +1,4 @@
-export { type Address, parseAddress } from "./address.ts";
+export { parseAddress } from "./address.ts";
 export { bindTerminal } from "./bind-terminal.ts";
 export { ConfigError, type ConfigProblem } from "./errors.ts";
 export { demoNetworkPath, loadNetwork, parseNetwork } from "./load.ts";
