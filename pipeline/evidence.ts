@@ -3,12 +3,13 @@
  * phasor noise, instrument transformer class, line constants, angle of the far source. Drawing everything at once keeps what methods share.
  */
 import type { Line, Terminal, TransformerClass } from "../config/index.ts";
-import { abs, add, type Complex, complex, div, mul, scale, sub } from "./complex.ts";
+import { abs, add, type Complex, complex, div, mul, polar, scale, sub } from "./complex.ts";
 import { isGrounded, loopCurrent, loopVoltage, phasesOf, superimposedLoopCurrent } from "./fault-loop.ts";
 import { type SequenceLine, sequenceLine } from "./long-line.ts";
 import { simpleReactance } from "./methods/reactance.ts";
 import { difference, type EndSequences, sequencesAlong, takagi, takagiLongLine } from "./methods/takagi.ts";
 import { twoEndedSynchronised } from "./methods/two-ended.ts";
+import { leadOfFaultCurrent } from "./methods/wiszniewski.ts";
 import { normalDeviates } from "./random.ts";
 import { type Abc, toPhases, toSequence } from "./sequence.ts";
 import type { FaultType } from "./types.ts";
@@ -61,12 +62,28 @@ function sequencesOf(pre: readonly Complex[], fault: readonly Complex[]): EndSeq
   return { v, i, deltaV: difference(v, toSequence(abcOf(pre, 0))), deltaI: difference(i, toSequence(abcOf(pre, 3))) };
 }
 
-/** Every method on one set of phasors. `turns`: angle [rad] by which the fault's current leads each end's superimposed current. */
+/**
+ * Place from one end, with the angle of the current distribution: the source behind this end comes from the event itself (−ΔV1/ΔI1), the far one is given.
+ * @param extraTurnRad  further angle between the fault's current and the superimposed current here
+ */
+function oneEnded(type: FaultType, seq: EndSequences, model: LineModel, farSource: Complex, extraTurnRad: number): number {
+  const near = div(scale(seq.deltaV.positive, -1), seq.deltaI.positive);
+  let m = takagiLongLine(type, seq, model, extraTurnRad);
+  // A source behind a measured end is inductive; a value that is not says that the event cannot tell it.
+  if (!(near.im > 0 && near.re > -near.im)) return m;
+  for (let k = 0; k < 2 && Number.isFinite(m); k++) {
+    const held = Math.min(1, Math.max(0, m));
+    m = takagiLongLine(type, seq, model, extraTurnRad + leadOfFaultCurrent(held, model.z1, near, farSource));
+  }
+  return m;
+}
+
+/** Every method on one set of phasors. `far`: for each end, the source taken to stand behind the other end, and an angle that no source explains. */
 function answersOf(
   type: FaultType,
   ends: readonly { index: number; pre: readonly Complex[]; fault: readonly Complex[] }[],
   model: LineModel,
-  turns: readonly number[],
+  far: readonly { readonly source: Complex; readonly turnRad: number }[],
 ): MethodAnswer[] {
   const answers: MethodAnswer[] = [];
   const k0 = div(sub(model.z0, model.z1), scale(model.z1, 3));
@@ -86,7 +103,7 @@ function answersOf(
         ends: [e],
         isOnlyShown: false,
         witness,
-        m: mirrored(takagiLongLine(type, seq, model, turns[e]!)),
+        m: mirrored(oneEnded(type, seq, model, far[e]!.source, far[e]!.turnRad)),
       },
     );
   });
@@ -144,10 +161,31 @@ export interface Evidence {
 /** Enough for a 90 % interval to be good to about a tenth of its width. */
 const DRAWS = 240;
 /**
- * The far source's angle is not known from one end; the current distribution factor of transmission networks turns by a few degrees.
+ * The source behind the far end, where the network file gives none: as strong as a usual transmission station, known to a factor of two and a few degrees.
  * Common practice, no source.
  */
-const DISTRIBUTION_ANGLE_SD_RAD = (3 * Math.PI) / 180;
+const USUAL_SHORT_CIRCUIT_MVA = 4_000;
+const USUAL_SOURCE_ANGLE_RAD = (85 * Math.PI) / 180;
+const SOURCE_SIZE_SD = Math.LN2;
+const SOURCE_ANGLE_SD_RAD = (2.5 * Math.PI) / 180;
+/** The same for a source that the file gives. */
+const GIVEN_SIZE_SD = 0.2;
+const GIVEN_ANGLE_SD_RAD = (1 * Math.PI) / 180;
+/** What lumped distribution factors leave of the angle: charging, load, the decaying offset. */
+const LEFT_ANGLE_SD_RAD = (0.5 * Math.PI) / 180;
+
+function farSourceOf(
+  line: Line,
+  endIndex: number,
+): { readonly source: Complex; readonly sizeSd: number; readonly angleSdRad: number } {
+  const given = line.terminals.find((t) => t.index !== endIndex)?.sourceZ1;
+  if (given) return { source: given, sizeSd: GIVEN_SIZE_SD, angleSdRad: GIVEN_ANGLE_SD_RAD };
+  return {
+    source: polar(line.nominalKv ** 2 / USUAL_SHORT_CIRCUIT_MVA, USUAL_SOURCE_ANGLE_RAD),
+    sizeSd: SOURCE_SIZE_SD,
+    angleSdRad: SOURCE_ANGLE_SD_RAD,
+  };
+}
 
 /** A limit of a class taken as the bound of an even spread. */
 const SD_OF_LIMIT = 1 / Math.sqrt(3);
@@ -156,11 +194,12 @@ const SD_OF_LIMIT = 1 / Math.sqrt(3);
 export function gatherEvidence(line: Line, type: FaultType, ends: readonly EndPhasors[], seed = 1): Evidence {
   const { z1, z0, b1, b0, z1Percent, z0Percent } = line.constants;
   const plain = ends.map((end) => ({ index: end.terminal.index, pre: end.pre, fault: end.fault }));
+  const usual = ends.map((end) => farSourceOf(line, end.terminal.index));
   const answers = answersOf(
     type,
     plain,
     modelOf(z1, z0, b1, b0),
-    ends.map(() => 0),
+    usual.map(({ source }) => ({ source, turnRad: 0 })),
   );
   const normal = normalDeviates(seed);
   const draws = Array.from({ length: DRAWS }, () => {
@@ -172,8 +211,11 @@ export function gatherEvidence(line: Line, type: FaultType, ends: readonly EndPh
         x.map((value, c) => mul(gains[c]!, add(value, complex(sd[c]! * normal(), sd[c]! * normal()))));
       return { index: end.terminal.index, pre: noisy(end.pre, end.preSd), fault: noisy(end.fault, end.faultSd) };
     });
-    const turns = ends.map(() => DISTRIBUTION_ANGLE_SD_RAD * normal());
-    return Float64Array.from(answersOf(type, drawn, model, turns), (answer) => answer.m);
+    const far = usual.map(({ source, sizeSd, angleSdRad }) => ({
+      source: mul(source, polar(Math.exp(sizeSd * normal()), angleSdRad * normal())),
+      turnRad: LEFT_ANGLE_SD_RAD * normal(),
+    }));
+    return Float64Array.from(answersOf(type, drawn, model, far), (answer) => answer.m);
   });
   return { answers, draws };
 }
