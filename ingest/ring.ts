@@ -1,14 +1,15 @@
 /** The rows of one stream: see `FrameRing` for what readers see. */
 import type { DataPlan, StreamConfig } from "./c37118/index.ts";
-import { decodeRowInto, planOf, timeUsOf } from "./c37118/index.ts";
+import { decodeRowInto, LEAP_DELETE, LEAP_PENDING, planOf, timeUsOf } from "./c37118/index.ts";
 import type { FrameRing, PhasorColumn, UnitInfo } from "./types.ts";
 
 /** At least this much is kept, in a power of two of rows. */
 const KEPT_S = 16;
 /** A tag further from the newest than this is believed only when the next frame agrees. */
 const JUMP_US = 10e6;
+const DAY_S = 86_400;
 
-export type Placement = "new" | "duplicate" | "too-late" | "doubtful-time";
+export type Placement = "new" | "duplicate" | "too-late" | "doubtful-time" | "leap-second";
 
 export class WritableRing implements FrameRing {
   readonly feedId: string;
@@ -22,7 +23,9 @@ export class WritableRing implements FrameRing {
   readonly frequencyHz: Float64Array;
   readonly rocofHzPerS: Float64Array;
   readonly stat: Uint16Array;
+  readonly timeQuality: Uint8Array;
   readonly plan: DataPlan;
+  #isAfterLeap = false;
   newestSlot = -1;
   /** Slot that the last `put` wrote or found. */
   lastSlot = -1;
@@ -50,6 +53,7 @@ export class WritableRing implements FrameRing {
     this.frequencyHz = new Float64Array(rows * this.units.length);
     this.rocofHzPerS = new Float64Array(rows * this.units.length);
     this.stat = new Uint16Array(rows * this.units.length);
+    this.timeQuality = new Uint8Array(rows);
     this.#slotOfRow = new Float64Array(rows).fill(-1);
     this.plan = planOf(config);
   }
@@ -76,12 +80,32 @@ export class WritableRing implements FrameRing {
     }
     this.#doubtfulUs = Number.NaN;
     const row = slot % this.capacity;
+    const quality = view.getUint8(at + 10);
+    if (this.#isLeap(quality, view.getUint32(at + 6), this.#slotOfRow[row] === slot)) return "leap-second";
     if (this.#slotOfRow[row] === slot) return "duplicate";
     decodeRowInto(this, row, this.plan, view, at);
     this.timeUs[row] = timeUs;
+    this.timeQuality[row] = quality;
     this.arrivedUs[row] = arrivedUs ?? timeUs;
     this.#slotOfRow[row] = slot;
     if (slot > this.newestSlot) this.newestSlot = slot;
     return "new";
+  }
+
+  /**
+   * SOC does not count leap seconds: 23:59:60 bears the number of the second after it or, in some units, of the one before. Slots are UTC, so that all
+   * feeds agree; they have no place for that second's frames, which are left out, and so is the one frame that follows: readers then see a gap where
+   * a second of the grid's life is not in the ring, and no phasor is compared across it. A deleted second is a gap as it is.
+   */
+  #isLeap(quality: number, socS: number, isTaken: boolean): boolean {
+    const second = socS % DAY_S;
+    if ((quality & LEAP_PENDING) !== 0 && (quality & LEAP_DELETE) === 0) {
+      const isLeap = second === 0 || (second === DAY_S - 1 && isTaken);
+      this.#isAfterLeap ||= isLeap;
+      return isLeap;
+    }
+    const isFirstAfter = this.#isAfterLeap;
+    this.#isAfterLeap = false;
+    return isFirstAfter;
   }
 }

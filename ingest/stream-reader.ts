@@ -5,8 +5,10 @@
 import { bindTerminal, type FeedConfig, type Network, type Terminal } from "../config/index.ts";
 import {
   BadConfiguration,
+  Config3Assembler,
   dataFrameBytes,
   decodeConfig,
+  decodeConfig3,
   type FrameDefect,
   Framer,
   frameDefects,
@@ -44,6 +46,9 @@ export class StreamReader {
   readonly #framer: Framer;
   readonly #events: StreamEvents;
   #configurationBytes: Buffer | undefined;
+  /** Which of the two the present stream is read by: a unit that sends both would else change its names to and fro. */
+  #configuredBy: "configuration-2" | "configuration-3" | undefined;
+  readonly #assembler = new Config3Assembler();
   #arrivedUs: number | undefined;
   #viewed: { bytes: Uint8Array; view: DataView } | undefined;
 
@@ -70,6 +75,7 @@ export class StreamReader {
   /** The connection or file ended; the next bytes begin a new one, whose configuration may be larger. */
   end(): void {
     this.#framer.end();
+    this.#configuredBy = undefined;
     this.#framer.largestFrameBytes = LARGEST_BEFORE_CONFIGURATION;
     this.#skippedBytes = 0;
   }
@@ -96,29 +102,40 @@ export class StreamReader {
       return;
     }
     if (type === "data") this.#takeData(bytes, at, size);
-    else if (type === "configuration-2" && !this.#takeConfiguration(bytes, at, size)) return;
+    else if ((type === "configuration-2" || type === "configuration-3") && !this.#takeConfiguration(type, bytes, at, size))
+      return;
+    // Pieces of configuration 3 before the last one, too: a recording needs them.
+    if (type === "configuration-3" && !this.config) this.#events.onFrame?.(bytes, at, size);
     // Also a frame that came twice or late: a replay then meets what the live feed met.
     if (this.config) this.#events.onFrame?.(bytes, at, size);
   }
 
-  #takeConfiguration(bytes: Uint8Array, at: number, size: number): boolean {
-    // The frame's own time and CRC differ each time it is sent; what it says is between them.
-    const said = Buffer.from(bytes.subarray(at + 14, at + size - 2));
-    if (this.config && this.#configurationBytes?.equals(said)) {
-      this.#limitFrames(size);
-      this.#events.onConfiguration(this.config);
-      return true;
-    }
+  #takeConfiguration(type: "configuration-2" | "configuration-3", bytes: Uint8Array, at: number, size: number): boolean {
+    if (this.#configuredBy !== undefined && this.#configuredBy !== type) return true;
+    let said: Buffer | undefined;
+    let config: StreamConfig;
     try {
-      this.config = decodeConfig(bytes, at, size);
+      // The frame's own time and CRC differ each time it is sent; what it says is between them.
+      said =
+        type === "configuration-2" ? Buffer.from(bytes.subarray(at + 14, at + size - 2)) : this.#assembler.take(bytes, at, size);
+      if (said === undefined) return true;
+      if (this.config && this.#configurationBytes?.equals(said)) {
+        this.#configuredBy = type;
+        this.#limitFrames(size);
+        this.#events.onConfiguration(this.config);
+        return true;
+      }
+      config = type === "configuration-2" ? decodeConfig(bytes, at, size) : decodeConfig3(said, this.feed.idCode);
     } catch (error) {
       if (!(error instanceof BadConfiguration)) throw error;
       this.#defect("bad-configuration", `configuration frame cannot be used: ${error.message}`);
       return false;
     }
+    this.config = config;
+    this.#configuredBy = type;
     this.#configurationBytes = said;
     this.ring = new WritableRing(this.feed.id, this.config);
-    this.#limitFrames(size);
+    this.#limitFrames(type === "configuration-2" ? size : LARGEST_BEFORE_CONFIGURATION);
     this.#events.onConfiguration(this.config);
     return true;
   }
@@ -135,6 +152,7 @@ export class StreamReader {
       return;
     }
     if (size !== ring.plan.frameBytes) {
+      this.#configuredBy = undefined; // whichever configuration comes next is believed
       this.#defect("size-unlike-configuration", `data frame of ${size} bytes, the configuration makes ${ring.plan.frameBytes}`);
       return;
     }
@@ -145,6 +163,7 @@ export class StreamReader {
     if (placement === "doubtful-time")
       this.#defect("time-out-of-bounds", `time tag of slot ${ring.lastSlot} is far from the last one`);
     else if (placement === "duplicate") this.#defect("duplicate", "frame came twice");
+    else if (placement === "leap-second") this.#defect("leap-second", "frame of a leap second, or the first after it, left out");
     else if (placement === "too-late") this.#defect("late", "frame came after its row was given to a newer one");
     if (placement !== "new") return;
     this.frames++;

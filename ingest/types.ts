@@ -42,6 +42,8 @@ export interface FrameRing {
   readonly rocofHzPerS: Float64Array;
   /** [capacity × units] STAT word as received. */
   readonly stat: Uint16Array;
+  /** [capacity] FRACSEC's quality byte as received: clock error and leap-second flags, see `timeQualityOf`. */
+  readonly timeQuality: Uint8Array;
   /** Highest slot that was ever written; -1 when empty. */
   readonly newestSlot: number;
   /** Row that holds the slot's frame, or -1 when that frame is missing or already overwritten. */

@@ -39,6 +39,29 @@ export const statWord = bits({
   triggerReason: [0, 4],
 });
 
+/** High byte of FRACSEC: clause 6.2.2, tables 3 and 4 (from memory), [lowest bit, width]. */
+const timeQualityByte = bits({ leapDelete: [6, 1], leapOccurred: [5, 1], leapPending: [4, 1], code: [0, 4] });
+export const LEAP_PENDING = timeQualityByte.write({ leapPending: 1 });
+export const LEAP_DELETE = timeQualityByte.write({ leapDelete: 1 });
+
+export interface TimeQuality {
+  readonly leapSecond: "none" | "pending" | "occurred";
+  /** Meaningful with a leap second only. */
+  readonly leapDirection: "added" | "deleted";
+  /** Bound of the clock's error [µs]: 0 when locked, Infinity when the clock failed or the code is reserved. */
+  readonly errorUs: number;
+}
+
+export function timeQualityOf(byte: number): TimeQuality {
+  const { leapDelete, leapOccurred, leapPending, code } = timeQualityByte.read(byte);
+  return {
+    leapSecond: leapPending ? "pending" : leapOccurred ? "occurred" : "none",
+    leapDirection: leapDelete ? "deleted" : "added",
+    // Code 1 is a nanosecond, each further one ten times as much, up to 10 s.
+    errorUs: code === 0 ? 0 : code <= 11 ? 10 ** (code - 4) : Number.POSITIVE_INFINITY,
+  };
+}
+
 /** SOC and FRACSEC as whole µs since 1970 UTC. */
 export const timeUsOf = (socS: number, fracSec: number, timeBase: number): number =>
   socS * 1e6 + Math.round(((fracSec & 0xff_ffff) / timeBase) * 1e6);

@@ -16,9 +16,9 @@ const unitStart = fields([
   ["analogCount", u16],
   ["digitalCount", u16],
 ]);
-const formatBits = bits({ polar: [0, 1], phasorFloat: [1, 1], analogFloat: [2, 1], frequencyFloat: [3, 1] });
+export const formatBits = bits({ polar: [0, 1], phasorFloat: [1, 1], analogFloat: [2, 1], frequencyFloat: [3, 1] });
 /** FNOM bit 0: set for 50 Hz. */
-const NOMINAL_50 = 1;
+export const NOMINAL_50 = 1;
 /** PHUNIT counts 10⁻⁵ volt or ampere per bit. */
 const PER_BIT = 1e-5;
 const analogKinds = ["instantaneous", "rms", "peak"] as const;
@@ -27,8 +27,8 @@ const analogKinds = ["instantaneous", "rms", "peak"] as const;
 export class BadConfiguration extends Error {}
 
 /** DATA_RATE: frames per second, or, negative, seconds per frame. */
-const rateOf = (word: number): number => (word >= 0 ? word : -1 / word);
-const wordOf = (rateHz: number): number => (rateHz >= 1 ? Math.round(rateHz) : -Math.round(1 / rateHz));
+export const rateOf = (word: number): number => (word >= 0 ? word : -1 / word);
+export const rateWordOf = (rateHz: number): number => (rateHz >= 1 ? Math.round(rateHz) : -Math.round(1 / rateHz));
 
 /** @throws BadConfiguration when counts and size do not fit, or a value is out of its range */
 export function decodeConfig(frame: Uint8Array, at = 0, size = frame.length): StreamConfig {
@@ -149,7 +149,7 @@ export function encodeConfig(config: StreamConfig, type: "configuration-1" | "co
     view.setUint16(p + 2, unit.configurationCount);
     p += 4;
   }
-  view.setInt16(p, wordOf(config.reportingRateHz));
+  view.setInt16(p, rateWordOf(config.reportingRateHz));
   finishFrame(frame, size, type, config.idCode, timeFields(timeUs, config.timeBase));
   return frame;
 }

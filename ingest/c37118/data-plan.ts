@@ -14,6 +14,9 @@ export interface DataPlan {
   readonly offsets: Int32Array;
   readonly formats: Uint8Array;
   readonly perBit: Float64Array;
+  /** Columns whose angle the configuration corrects, and cos and sin of each correction; mostly none. */
+  readonly turned: Int32Array;
+  readonly turns: Float64Array;
   /** [units] where STAT and FREQ stand, whether FREQ is floating point, nominal frequency. */
   readonly statAt: Int32Array;
   readonly frequencyAt: Int32Array;
@@ -37,6 +40,9 @@ export function planOf(config: StreamConfig): DataPlan {
     frequencyAt[k] = unitAt + 2 + unit.phasors.length * size;
     unitAt += unitDataBytes(unit);
   });
+  const turned = columns.flatMap(({ unit, phasor }, k) =>
+    phasor.angleRad && !unit.phasorsAreFloat ? [[k, -phasor.angleRad] as const] : [],
+  );
   return {
     frameBytes: dataFrameBytes(config),
     timeBase: config.timeBase,
@@ -50,6 +56,8 @@ export function planOf(config: StreamConfig): DataPlan {
           ? enumerated.polarInt
           : enumerated.rectInt,
     ),
+    turned: Int32Array.from(turned, ([k]) => k),
+    turns: Float64Array.from(turned.flatMap(([, angle]) => [Math.cos(angle), Math.sin(angle)])),
     perBit: Float64Array.from(columns, ({ phasor }) => phasor.perBit),
     statAt,
     frequencyAt,
@@ -94,6 +102,13 @@ export function decodeRowInto(target: RowTarget, row: number, plan: DataPlan, vi
         turn(phasors, to, angle === ABSENT ? Number.NaN : magnitude * plan.perBit[k]!, angle * ANGLE_PER_BIT);
       }
     }
+  }
+  for (let n = 0; n < plan.turned.length; n++) {
+    const on = (row * columns + plan.turned[n]!) * 2;
+    const re = phasors[on]!;
+    const im = phasors[on + 1]!;
+    phasors[on] = re * plan.turns[2 * n]! - im * plan.turns[2 * n + 1]!;
+    phasors[on + 1] = re * plan.turns[2 * n + 1]! + im * plan.turns[2 * n]!;
   }
   const units = plan.statAt.length;
   for (let u = 0; u < units; u++) {

@@ -12,5 +12,6 @@ export const frameDefects = [
   "time-out-of-bounds",
   "duplicate",
   "late",
+  "leap-second",
 ] as const;
 export type FrameDefect = (typeof frameDefects)[number];

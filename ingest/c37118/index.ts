@@ -1,7 +1,8 @@
 export { crcCcitt } from "./checksum.ts";
-export { decodeCommand, encodeCommand } from "./command-frame.ts";
-export { statWord, timeUsOf, typeOf } from "./common-header.ts";
+export { commandExtension, decodeCommand, encodeCommand } from "./command-frame.ts";
+export { LEAP_DELETE, LEAP_PENDING, statWord, timeQualityOf, timeUsOf, typeOf } from "./common-header.ts";
 export { BadConfiguration, decodeConfig, encodeConfig } from "./config-frame.ts";
+export { Config3Assembler, decodeConfig3, encodeConfig3 } from "./config-frame-3.ts";
 export { encodeData } from "./data-frame.ts";
 export { type DataPlan, decodeRowInto, planOf } from "./data-plan.ts";
 export { type FrameDefect, frameDefects } from "./defects.ts";

@@ -1,17 +1,31 @@
-/** What a configuration frame says of a stream. Source: IEEE C37.118.2-2011, clause 6.4, tables 8 and 9 (from memory). */
+/**
+ * What a configuration frame says of a stream; what only configuration frame 3 can say is optional. Source: IEEE C37.118.2-2011, clause 6.4, tables 8
+ * to 11 (from memory).
+ */
 
 export interface PhasorChannel {
   readonly name: string;
   readonly kind: "voltage" | "current";
   /** Volt or ampere per bit of an integer phasor; unused for floating point. */
   readonly perBit: number;
+  /** Configuration 3: by how much the angles of an integer phasor are sent too large [rad]; sign, and that floating point is left alone, as an independent dissector reads it (test/published). */
+  readonly angleRad?: number;
+  /** Configuration 3: which sequence or phase it is. */
+  readonly component?: PhasorComponent;
+  /** Configuration 3: how the unit changed it (resampled, filtered, calibrated, rotated, made up), 16 flags as sent. */
+  readonly changes?: number;
 }
+
+/** The place of each is its code. */
+export const phasorComponents = ["zero", "positive", "negative", "reserved-3", "A", "B", "C", "reserved-7"] as const;
+export type PhasorComponent = (typeof phasorComponents)[number];
 
 export interface AnalogChannel {
   readonly name: string;
   readonly kind: "instantaneous" | "rms" | "peak";
-  /** User-defined scale, signed 24 bits, as written. */
+  /** Configurations 1 and 2: user-defined scale, signed 24 bits, as written. Configuration 3: value = scale · sent + offset. */
   readonly scale: number;
+  readonly offset?: number;
 }
 
 /** One 16-bit status word. */
@@ -34,6 +48,23 @@ export interface UnitConfig {
   readonly digitals: readonly DigitalWord[];
   readonly nominalHz: 50 | 60;
   readonly configurationCount: number;
+  /** Configuration 3 only. */
+  readonly site?: UnitSite;
+}
+
+/** What a configuration frame 3 tells of the unit itself. */
+export interface UnitSite {
+  /** 32 hexadecimal digits, chosen by the user. */
+  readonly globalId: string;
+  /** WGS 84; Infinity when not told. */
+  readonly latitudeDeg: number;
+  readonly longitudeDeg: number;
+  readonly elevationM: number;
+  /** As in IEEE C37.118.1; whatever else a unit sends is kept as "unknown". */
+  readonly serviceClass: "M" | "P" | "unknown";
+  /** Length of the measuring window with all filters; -1 when not told. */
+  readonly windowUs: number;
+  readonly groupDelayUs: number;
 }
 
 export interface StreamConfig {

@@ -47,6 +47,7 @@ export function plainRing(
     capacity,
     timeUs: new Float64Array(capacity),
     arrivedUs: new Float64Array(capacity),
+    timeQuality: new Uint8Array(capacity),
     phasors: new Float64Array(capacity * 12),
     frequencyHz: new Float64Array(capacity),
     rocofHzPerS: new Float64Array(capacity),

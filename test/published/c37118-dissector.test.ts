@@ -7,7 +7,17 @@ import { mkdtempSync, rmSync, writeFileSync } from "node:fs";
 import { tmpdir } from "node:os";
 import { join } from "node:path";
 import { afterAll, describe, expect, it } from "vitest";
-import { encodeCommand, encodeConfig, encodeData, encodeHeader, type StreamConfig, type UnitConfig } from "../../ingest/index.ts";
+import {
+  decodeRowInto,
+  encodeCommand,
+  encodeConfig,
+  encodeConfig3,
+  encodeData,
+  encodeHeader,
+  planOf,
+  type StreamConfig,
+  type UnitConfig,
+} from "../../ingest/index.ts";
 
 const folder = mkdtempSync(join(tmpdir(), "spanmark-dissector-"));
 afterAll(() => rmSync(folder, { recursive: true }));
@@ -202,5 +212,83 @@ describe("an independent dissector reads what our codec wrote", () => {
     expect(text).toMatch(/Data transmission off/i);
     expect(text).toMatch(/Data transmission on/i);
     expect(text).toMatch(/Send CFG-2 frame/i);
+  });
+
+  it("configuration 3 of two units, and data read by its scales", () => {
+    const site = {
+      globalId: "00112233445566778899aabbccddeeff",
+      latitudeDeg: 57.25,
+      longitudeDeg: -4.5,
+      elevationM: 150,
+      serviceClass: "P" as const,
+      windowUs: 33_333,
+      groupDelayUs: 16_667,
+    };
+    const config = stream(
+      unit({
+        name: "Brack, the bay of the line to Tolva",
+        phasorsArePolar: true,
+        phasorsAreFloat: false,
+        phasors: [
+          { name: "Voltage of phase A", kind: "voltage", component: "A", perBit: 10 },
+          { name: "Current of phase A", kind: "current", component: "A", perBit: 0.5, angleRad: 0.5 },
+        ],
+        site,
+      }),
+      unit({
+        name: "Tolva",
+        idCode: 242,
+        nominalHz: 50,
+        phasors: [{ name: "Current of phase B", kind: "current", component: "B", perBit: 1, angleRad: -0.25 }],
+        analogs: [{ name: "MW", kind: "rms", scale: 2, offset: -1 }],
+      }),
+    );
+    const data = { stat: 0, phasors: [1200, 0, 30, 40], frequencyHz: 60, rocofHzPerS: 0, analogs: [1], digitals: [0] };
+    const frame = encodeData(config, TIME_US, [data, { ...data, phasors: [30, 40], frequencyHz: 50 }], 0x26);
+    const text = dissected("configuration3", [
+      ...encodeConfig3(config, TIME_US),
+      frame,
+      encodeCommand(241, "send-configuration-3", TIME_US),
+      encodeCommand(241, "extended", TIME_US, Buffer.from("c0ffee00", "hex")),
+    ]);
+    expect(text).not.toMatch(/Malformed/i);
+    expect(text.match(/Checksum: 0x[0-9a-f]+ \[correct\]/g)?.length).toBe(4);
+    for (const words of [
+      "Added in IEEE Std C37.118.2-2011",
+      "Station name: Brack, the bay of the line to Tolva",
+      "00 11 22 33 44 55 66 77 88 99 aa bb cc dd ee ff",
+      "Phasor Data flags: Voltage, Phase A",
+      "Phasor Data flags: Current, Phase B",
+      "Phasor scale factor: 0.5",
+      "Phasor angle offset: -0.25",
+      "Analog offset: -1",
+      "PMU Latitude: 57.25",
+      "PMU Longitude: -4.5",
+      "PMU Elevation: 150",
+      "Unspecified Location",
+      "Service class: Protection",
+      "PM window length: 33333",
+      "PM group delay: 16667",
+      "Rate of transmission: 60",
+      "Leap second occurred: True",
+      "Message Time Quality indicator code: Clock unlocked, time within 10^-4 s (0x6)",
+      "Command: send CFG-3 frame",
+      "Extended frame data: c0ffee00",
+    ])
+      expect(text).toContain(words);
+    const plan = planOf(config);
+    const row = {
+      phasors: new Float64Array(6),
+      frequencyHz: new Float64Array(2),
+      rocofHzPerS: new Float64Array(2),
+      stat: new Uint16Array(2),
+    };
+    decodeRowInto(row, 0, plan, new DataView(frame.buffer, frame.byteOffset, frame.length), 0);
+    const shown = numbers(text, /Phasor #\d+: "[^"]*", +(-?[\d.]+)[VA] ∠ *(-?[\d.]+)°/g);
+    expect(shown.length).toBe(3);
+    for (const [k, [size, angle]] of shown.entries()) {
+      expect(Math.hypot(row.phasors[2 * k]!, row.phasors[2 * k + 1]!)).toBeCloseTo(size!, 2);
+      expect((Math.atan2(row.phasors[2 * k + 1]!, row.phasors[2 * k]!) * 180) / Math.PI).toBeCloseTo(angle!, 2);
+    }
   });
 });
