@@ -42,23 +42,55 @@ const indices = (capture: TerminalCapture, isWanted: (t: number) => boolean): nu
 const PRE_FRAMES = 12;
 function before(capture: TerminalCapture, limitS: number) {
   const frames = indices(capture, (t) => t <= limitS).slice(-PRE_FRAMES);
-  return frames.length < 3 ? undefined : { ...meanOf(frames.map((n) => atEpoch(capture, n))), count: frames.length };
+  return frames.length < 3
+    ? undefined
+    : { ...meanOf(frames.map((n) => atEpoch(capture, n))), count: frames.length, used: frames };
 }
 
-/** Frames with their whole window in the fault; `undefined` when there are none. */
-export function wholeWindowPhasors(capture: TerminalCapture, window: MeasuringWindow, timing: Timing): EndPhasors | undefined {
+/**
+ * Phasors from frames with their whole window in the fault; `undefined` when there are none.
+ * @param isOnsetKnown  the timing is fitted: then the decaying offset, which follows from the onset, is taken out of the currents
+ */
+export function wholeWindowPhasors(
+  capture: TerminalCapture,
+  window: MeasuringWindow,
+  timing: Timing,
+  isOnsetKnown: boolean,
+): EndPhasors | undefined {
   const pre = before(capture, timing.onsetS - window.halfS);
   const inside = indices(capture, (t) => t - window.halfS >= timing.onsetS && t + window.halfS <= timing.clearingS);
   if (!pre || inside.length === 0) return undefined;
+  const frames = `${inside.length} frame${inside.length === 1 ? "" : "s"} with the whole window in the fault`;
   const fault = meanOf(inside.map((n) => atEpoch(capture, n)));
+  // With few frames their own scatter says little: never less than what the undisturbed frames show.
+  const leastSd = pre.sd.map((s) => s / Math.sqrt(inside.length));
+  const preSd = pre.sd.map((s) => s / Math.sqrt(pre.count));
+  if (!isOnsetKnown) {
+    const faultSd = fault.sd.map((s, c) => Math.max(s / Math.sqrt(inside.length), leastSd[c]!));
+    return { terminal: capture.terminal, pre: pre.mean, fault: fault.mean, preSd, faultSd, frames };
+  }
+  const used = [...pre.used, ...inside];
+  const part = {
+    timesS: Float64Array.from(used, (n) => capture.timesS[n]!),
+    phasors: Float64Array.from(
+      used.flatMap((n) => [...capture.phasors.subarray(n * NUMBERS_PER_ROW, (n + 1) * NUMBERS_PER_ROW)]),
+    ),
+    window,
+    nominalHz: capture.nominalHz,
+    deltaHz: capture.deltaHz,
+  };
+  const states = statesAt(
+    prepareEnd(part, PROFILE.offsetS),
+    { onsetS: timing.onsetS, clearingS: Number.POSITIVE_INFINITY },
+    PROFILE,
+  );
   return {
     terminal: capture.terminal,
-    pre: pre.mean,
-    fault: fault.mean,
-    preSd: pre.sd.map((s) => s / Math.sqrt(pre.count)),
-    // With few frames their own scatter says little: never less than what the undisturbed frames show.
-    faultSd: fault.sd.map((s, c) => Math.max(s, pre.sd[c]!) / Math.sqrt(inside.length)),
-    frames: `${inside.length} frame${inside.length === 1 ? "" : "s"} with the whole window in the fault`,
+    pre: states.pre,
+    fault: states.fault,
+    preSd,
+    faultSd: states.faultSd.map((s, c) => Math.max(s, leastSd[c]!)),
+    frames,
   };
 }
 

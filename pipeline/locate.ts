@@ -121,7 +121,7 @@ function settledPhasors(ends: readonly CapturedEnd[]): Phasors | undefined {
   const { timing } = fitTiming(prepared, start, PROFILE);
   let residual: number | undefined;
   const phasors = ends.map(({ capture, window }): EndPhasors => {
-    const whole = wholeWindowPhasors(capture, window, timing);
+    const whole = wholeWindowPhasors(capture, window, timing, true);
     if (whole) return whole;
     const unmixed = unmixedPhasors(capture, window, timing);
     residual = Math.max(residual ?? 0, unmixed.residual);
@@ -154,7 +154,7 @@ function earlyPhasors(ends: readonly CapturedEnd[], progress: readonly Progress[
     if (n === undefined) return [];
     const at = capture.timesS[n]!;
     const timing = { onsetS: at - window.halfS - 1e-6, clearingS: at + window.halfS + 1e-6 };
-    const phasors = wholeWindowPhasors(capture, window, timing);
+    const phasors = wholeWindowPhasors(capture, window, timing, false);
     return phasors ? [{ phasors, timing }] : [];
   });
   if (plateaus.length > 0) {

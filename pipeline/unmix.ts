@@ -8,7 +8,7 @@
  * intervals after the first opening, each a state of its own, held to its neighbours by a weak ridge.
  */
 import { type Complex, complex } from "./complex.ts";
-import { type LeastSquares, reduce, solveReduced } from "./least-squares.ts";
+import { reduce, solveReduced } from "./least-squares.ts";
 import { addKernelUpTo, type Kernel, kernelOf, type MeasuringWindow } from "./measuring-window.ts";
 
 const CHANNELS = 6;
@@ -44,6 +44,10 @@ export interface ClearingModel {
 /** Five states, 3 ms apart: 12 ms covers poles at successive current zeros and ends some milliseconds apart. */
 export const PROFILE: ClearingModel = { intervals: 4, intervalS: 0.003, ridge: 0.02, offsetS: 0.04 };
 
+/** The free offset beside what continuity gives, and trapped charge, in units of the ridge: both are known to be there, not how large. */
+const OFFSET_RIDGE = 2;
+const TRAPPED_RIDGE = 0.1;
+
 export interface States {
   /** VA VB VC IA IB IC, at the epoch's phase reference. */
   readonly pre: readonly Complex[];
@@ -64,6 +68,8 @@ export interface PreparedEnd extends FittedEnd {
   readonly direct: Kernel;
   readonly image: Kernel;
   readonly offset: Kernel;
+  /** A voltage that stands still: the charge of an opened line. */
+  readonly constant: Kernel;
   /** [frames × 6] cos, sin of the turning of direct, image, offset since the epoch. */
   readonly turns: Float64Array;
 }
@@ -101,13 +107,22 @@ export function prepareEnd(end: FittedEnd, offsetS: number): PreparedEnd {
     direct: kernelOf(end.window, 0, turn),
     image: kernelOf(end.window, 0, imageTurn),
     offset: kernelOf(end.window, -1 / offsetS, offsetTurn),
+    constant: kernelOf(end.window, 0, offsetTurn),
   };
 }
 
-/** Unknowns of each channel: before (re, im), fault (re, im), offset; then each interval of the clearing and the state after it (re, im). */
-function unknowns(timing: Timing, model: ClearingModel): number {
-  return timing.clearingS === Number.POSITIVE_INFINITY ? 5 : 7 + 2 * model.intervals;
-}
+/** Columns of the linear system: before (re, im), fault (re, im), offset; then each interval of the clearing and the state after it (re, im), trapped charge. */
+const PRE = 0;
+const FAULT = 2;
+const OFFSET = 4;
+const FIRST_INTERVAL = 5;
+
+/** Voltages and currents are fitted apart: a current cannot jump, so its offset follows from the states; a voltage keeps the charge of the opened line. */
+const groups = [
+  { first: 0, isCurrent: false },
+  { first: 3, isCurrent: true },
+] as const;
+const PER_GROUP = 3;
 
 const seen = new Float64Array(2);
 /** What the kernel shows between `startS` and `stopS` at frame n, turned to the epoch; left in `seen`. */
@@ -125,37 +140,41 @@ function show(end: PreparedEnd, kernel: Kernel, which: 0 | 1 | 2, n: number, sta
 }
 
 interface Workspace {
+  /** Responses of all columns, shared by both groups. */
+  base: Float64Array;
   a: Float64Array;
   b: Float64Array;
 }
-const makeWorkspace = (): Workspace => ({ a: new Float64Array(0), b: new Float64Array(0) });
+const makeWorkspace = (): Workspace => ({ base: new Float64Array(0), a: new Float64Array(0), b: new Float64Array(0) });
 
-/** Fills and reduces one end's system. Returns the summed squared residual (channel scales), ridge rows included. */
-function fitEnd(
-  end: PreparedEnd,
-  timing: Timing,
-  model: ClearingModel,
-  work: Workspace,
-): { cost: number; rows: number; columns: number } {
-  const columns = unknowns(timing, model);
-  const isCleared = columns > 5;
-  const ridgeRows = isCleared && model.ridge > 0 ? 2 * (model.intervals + 1) : 0;
-  const rows = 2 * end.frames + ridgeRows + 1;
-  if (work.a.length < rows * columns) work.a = new Float64Array(rows * columns);
-  if (work.b.length < rows * CHANNELS) work.b = new Float64Array(rows * CHANNELS);
-  const { a, b } = work;
-  a.fill(0, 0, rows * columns);
-  b.fill(0, 2 * end.frames * CHANNELS, rows * CHANNELS);
+interface Shape {
+  readonly rows: number;
+  readonly columns: number;
+  readonly states: number;
+}
 
+/** Fills `work.base` with what each frame shows of each column at unit size, then the ridge rows. */
+function fillBase(end: PreparedEnd, timing: Timing, model: ClearingModel, work: Workspace): Shape {
+  const isCleared = timing.clearingS !== Number.POSITIVE_INFINITY;
   const states = isCleared ? model.intervals + 3 : 2;
+  const columns = isCleared ? FIRST_INTERVAL + 2 * model.intervals + 3 : FIRST_INTERVAL;
+  const ridgeRows = isCleared ? 2 * (model.intervals + 1) + 1 : 0;
+  const rows = 2 * end.frames + ridgeRows + 1;
+  if (work.base.length < rows * columns) {
+    work.base = new Float64Array(rows * columns);
+    work.a = new Float64Array(rows * columns);
+    work.b = new Float64Array(rows * PER_GROUP);
+  }
+  const { base } = work;
+  base.fill(0, 0, rows * columns);
   for (let n = 0; n < end.frames; n++) {
     const t = end.timesS[n]!;
     const top = 2 * n * columns;
     const bottom = top + columns;
     for (let s = 0; s < states; s++) {
       const start = s === 0 ? Number.NEGATIVE_INFINITY : s === 1 ? timing.onsetS : timing.clearingS + (s - 2) * model.intervalS;
-      const stop =
-        s === 0 ? timing.onsetS : s === states - 1 ? Number.POSITIVE_INFINITY : timing.clearingS + (s - 1) * model.intervalS;
+      const isLast = s === states - 1;
+      const stop = s === 0 ? timing.onsetS : isLast ? Number.POSITIVE_INFINITY : timing.clearingS + (s - 1) * model.intervalS;
       if (start > t + end.window.halfS || stop < t - end.window.halfS) continue;
       const col = s < 2 ? 2 * s : 2 * s + 1;
       show(end, end.direct, 0, n, start, stop);
@@ -164,61 +183,118 @@ function fitEnd(
       show(end, end.image, 1, n, start, stop);
       const iRe = seen[0]!;
       const iIm = seen[1]!;
-      a[top + col] = dRe + iRe;
-      a[bottom + col] = dIm + iIm;
-      a[top + col + 1] = -(dIm - iIm);
-      a[bottom + col + 1] = dRe - iRe;
+      base[top + col] = dRe + iRe;
+      base[bottom + col] = dIm + iIm;
+      base[top + col + 1] = -(dIm - iIm);
+      base[bottom + col + 1] = dRe - iRe;
       if (s === 1) {
         show(end, end.offset, 2, n, start, stop);
         const size = Math.SQRT2 * Math.exp(-(t - start) / model.offsetS);
-        a[top + 4] = size * seen[0]!;
-        a[bottom + 4] = size * seen[1]!;
+        base[top + OFFSET] = size * seen[0]!;
+        base[bottom + OFFSET] = size * seen[1]!;
+      } else if (isLast && isCleared) {
+        show(end, end.constant, 2, n, start, stop);
+        base[top + columns - 1] = Math.SQRT2 * seen[0]!;
+        base[bottom + columns - 1] = Math.SQRT2 * seen[1]!;
       }
-    }
-    for (let c = 0; c < CHANNELS; c++) {
-      const at = (n * CHANNELS + c) * 2;
-      b[2 * n * CHANNELS + c] = end.phasors[at]! / end.scale[c]!;
-      b[(2 * n + 1) * CHANNELS + c] = end.phasors[at + 1]! / end.scale[c]!;
     }
   }
   let row = 2 * end.frames;
-  if (ridgeRows > 0) {
+  if (isCleared) {
     for (let s = 1; s < states - 1; s++) {
-      const here = s === 1 ? 2 : 2 * s + 1;
+      const here = s === 1 ? FAULT : 2 * s + 1;
       const next = 2 * s + 3;
       for (let q = 0; q < 2; q++, row++) {
-        a[row * columns + here + q] = -model.ridge;
-        a[row * columns + next + q] = model.ridge;
+        base[row * columns + here + q] = -model.ridge;
+        base[row * columns + next + q] = model.ridge;
       }
     }
+    base[row * columns + columns - 1] = TRAPPED_RIDGE * model.ridge;
+    row++;
   }
-  a[row * columns + 4] = 0.3 * (model.ridge || PROFILE.ridge); // the offset is small too
-  return { cost: reduce(a, b, rows, columns, CHANNELS), rows, columns };
+  base[row * columns + OFFSET] = OFFSET_RIDGE * model.ridge;
+  return { rows, columns, states };
+}
+
+/** Brings one group's system into `work.a`, `work.b` and reduces it; returns its summed squared residual (channel scales), ridge rows included. */
+function reduceGroup(end: PreparedEnd, timing: Timing, work: Workspace, { rows, columns }: Shape, g: 0 | 1): number {
+  const { base, a, b } = work;
+  const { first, isCurrent } = groups[g];
+  a.set(base.subarray(0, rows * columns));
+  b.fill(0, 2 * end.frames * PER_GROUP, rows * PER_GROUP);
+  if (isCurrent) {
+    // i(t0+) = i(t0−): the offset is what the states lack of each other at the onset; the free column keeps what this misses.
+    const angle = 2 * Math.PI * (end.nominalHz + end.deltaHz) * timing.onsetS;
+    const cos = Math.SQRT2 * Math.cos(angle);
+    const sin = Math.SQRT2 * Math.sin(angle);
+    for (let row = 0; row < 2 * end.frames; row++) {
+      const at = row * columns;
+      const offset = a[at + OFFSET]! / Math.SQRT2;
+      a[at + PRE] = a[at + PRE]! + cos * offset;
+      a[at + PRE + 1] = a[at + PRE + 1]! - sin * offset;
+      a[at + FAULT] = a[at + FAULT]! - cos * offset;
+      a[at + FAULT + 1] = a[at + FAULT + 1]! + sin * offset;
+    }
+    // No charge is left on a current.
+    if (columns > FIRST_INTERVAL) for (let row = 0; row < 2 * end.frames; row++) a[row * columns + columns - 1] = 0;
+  }
+  for (let n = 0; n < end.frames; n++) {
+    for (let k = 0; k < PER_GROUP; k++) {
+      const at = (n * CHANNELS + first + k) * 2;
+      b[2 * n * PER_GROUP + k] = end.phasors[at]! / end.scale[first + k]!;
+      b[(2 * n + 1) * PER_GROUP + k] = end.phasors[at + 1]! / end.scale[first + k]!;
+    }
+  }
+  return reduce(a, b, rows, columns, PER_GROUP);
+}
+
+/** Summed squared residual of one end's frames at a timing. */
+function costOf(end: PreparedEnd, timing: Timing, model: ClearingModel, work: Workspace): number {
+  const shape = fillBase(end, timing, model, work);
+  return reduceGroup(end, timing, work, shape, 0) + reduceGroup(end, timing, work, shape, 1);
 }
 
 /** The linear part: all states at a given timing. */
 export function statesAt(end: PreparedEnd, timing: Timing, model: ClearingModel): States {
   const work = makeWorkspace();
-  const { rows, columns } = fitEnd(end, timing, model, work);
-  const fit = solveReduced(work.a, work.b, rows, columns, CHANNELS);
-  const total = fit.residual.reduce((s, r) => s + r, 0);
-  const freedom = Math.max(1, 2 * end.frames - columns);
+  const shape = fillBase(end, timing, model, work);
+  const freedom = Math.max(1, 2 * end.frames - shape.columns);
+  let total = 0;
+  const parts = ([0, 1] as const).map((g) => {
+    reduceGroup(end, timing, work, shape, g);
+    const fit = solveReduced(work.a, work.b, shape.rows, shape.columns, PER_GROUP);
+    total += fit.residual.reduce((s, r) => s + r, 0);
+    const { first } = groups[g];
+    const phasors = (column: number) =>
+      Array.from({ length: PER_GROUP }, (_, k) =>
+        complex(
+          fit.solution[column * PER_GROUP + k]! * end.scale[first + k]!,
+          fit.solution[(column + 1) * PER_GROUP + k]! * end.scale[first + k]!,
+        ),
+      );
+    const sd = (column: number) =>
+      Array.from(
+        { length: PER_GROUP },
+        (_, k) => Math.sqrt((fit.residual[k]! / freedom) * fit.varianceFactor[column]!) * end.scale[first + k]!,
+      );
+    return {
+      pre: phasors(PRE),
+      fault: phasors(FAULT),
+      post: shape.states > 2 ? phasors(shape.columns - 3) : undefined,
+      preSd: sd(PRE),
+      faultSd: sd(FAULT),
+    };
+  });
+  const [v, i] = parts as [(typeof parts)[0], (typeof parts)[0]];
   return {
-    pre: phasorsOf(fit, 0, end.scale),
-    fault: phasorsOf(fit, 2, end.scale),
-    post: columns > 5 ? phasorsOf(fit, columns - 2, end.scale) : undefined,
-    faultSd: spreadOf(fit, 2, end.scale, freedom),
-    preSd: spreadOf(fit, 0, end.scale, freedom),
+    pre: [...v.pre, ...i.pre],
+    fault: [...v.fault, ...i.fault],
+    post: v.post && i.post ? [...v.post, ...i.post] : undefined,
+    preSd: [...v.preSd, ...i.preSd],
+    faultSd: [...v.faultSd, ...i.faultSd],
     residual: Math.sqrt(total / (end.frames * CHANNELS)),
   };
 }
-
-const phasorsOf = (fit: LeastSquares, row: number, scale: Float64Array): Complex[] =>
-  Array.from({ length: CHANNELS }, (_, c) =>
-    complex(fit.solution[row * CHANNELS + c]! * scale[c]!, fit.solution[(row + 1) * CHANNELS + c]! * scale[c]!),
-  );
-const spreadOf = (fit: LeastSquares, row: number, scale: Float64Array, freedom: number): number[] =>
-  Array.from({ length: CHANNELS }, (_, c) => Math.sqrt((fit.residual[c]! / freedom) * fit.varianceFactor[row]!) * scale[c]!);
 
 export interface TimingFit {
   readonly timing: Timing;
@@ -235,7 +311,7 @@ export function fitTiming(ends: readonly PreparedEnd[], start: Timing, model: Cl
   const work = makeWorkspace();
   const cost = (timing: Timing): number => {
     let total = 0;
-    for (const end of ends) total += fitEnd(end, timing, model, work).cost;
+    for (const end of ends) total += costOf(end, timing, model, work);
     return total;
   };
   if (start.clearingS === Number.POSITIVE_INFINITY) {

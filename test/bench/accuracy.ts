@@ -14,6 +14,7 @@ const { values } = parseArgs({
     cases: { type: "string", default: "300" },
     seed: { type: "string", default: "1" },
     verbose: { type: "boolean", default: false },
+    rows: { type: "string", default: "" },
   },
 });
 const options: CampaignOptions = {
@@ -41,6 +42,7 @@ interface Outcome {
   readonly takagiKm: number;
 }
 
+const chosen = values.rows === "" ? rows.map((_, k) => k) : values.rows.split(",").map(Number);
 const quantile = (x: readonly number[], q: number): number =>
   [...x].sort((a, b) => a - b)[Math.min(x.length - 1, Math.floor(q * x.length))] ?? Number.NaN;
 const lengthKm = 148.2;
@@ -50,6 +52,7 @@ const ourMs: number[] = [];
 for (let n = 0; n < options.cases; n++) {
   const c = campaignCase(n, options);
   rows.forEach((row, r) => {
+    if (!chosen.includes(r)) return;
     const { network, blocks } = framesOf(c, row.units, options);
     const tracker = new DisturbanceTracker(network);
     const events = [];
