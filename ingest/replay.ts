@@ -1,13 +1,11 @@
-/** Raw recordings as blocks of one frame each, all feeds interleaved by their time tags: the same order every time. */
-import { closeSync, openSync, readSync } from "node:fs";
+/** Recordings (raw files, folders of rotated ones, captures) as blocks of one frame each, all feeds interleaved by their time tags: the same order every time. */
 import type { Logger } from "pino";
 import type { FeedConfig, Network } from "../config/index.ts";
 import { type FrameDefect, Framer, timeUsOf, typeOf } from "./c37118/index.ts";
+import { openRecording, type RecordingBytes } from "./recording/read-frames.ts";
 import { RecordingError } from "./recording-error.ts";
 import { bindingProblems, StreamReader } from "./stream-reader.ts";
 import type { FrameBlock } from "./types.ts";
-
-const CHUNK_BYTES = 64 * 1024;
 
 /**
  * @param files  path of each feed's recording
@@ -43,7 +41,7 @@ class Track {
   readonly #network: Network;
   readonly #path: string;
   readonly #log: Logger;
-  readonly #file: number;
+  readonly #bytes: RecordingBytes;
   readonly #reader: StreamReader;
   readonly #framer: Framer;
   readonly #waiting: Buffer[] = [];
@@ -56,16 +54,12 @@ class Track {
     this.#network = network;
     this.#path = path;
     this.#log = log;
-    try {
-      this.#file = openSync(path, "r");
-    } catch (cause) {
-      throw new RecordingError("unreadable", `${path}: cannot be read: ${(cause as Error).message}`, cause);
-    }
     const onDefect = (code: FrameDefect, words: string) => {
       const count = (this.#defects.get(code) ?? 0) + 1;
       this.#defects.set(code, count);
       if (count === 1) log.warn({ feed: feed.id, file: path, defect: code }, words);
     };
+    this.#bytes = openRecording(path, feed.idCode, onDefect);
     this.#reader = new StreamReader(feed, {
       onConfiguration: (config) => {
         this.#timeBase = config.timeBase;
@@ -86,6 +80,13 @@ class Track {
     this.#advance();
     const { defects, config, feed } = this.#reader;
     if (!config) {
+      const others = [...this.#bytes.otherIdCodes];
+      if (others.length > 0 && this.#waiting.length === 0) {
+        throw new RecordingError(
+          "wrong-id-code",
+          `${this.#path}: this capture holds no usable stream of IDCODE ${feed.idCode}, which feed "${feed.id}" has in the network file; it holds ${others.join(", ")}`,
+        );
+      }
       if (defects["wrong-id-code"] > 0) {
         throw new RecordingError(
           "wrong-id-code",
@@ -115,7 +116,7 @@ class Track {
   }
 
   close(): void {
-    closeSync(this.#file);
+    this.#bytes.close();
     if (this.#defects.size === 0) return;
     const { feed, frames, missingFrames } = this.#reader;
     const defects = Object.fromEntries(this.#defects);
@@ -140,11 +141,10 @@ class Track {
   }
 
   #readMore(): void {
-    const chunk = Buffer.alloc(CHUNK_BYTES);
-    const got = readSync(this.#file, chunk, 0, CHUNK_BYTES, null);
-    if (got === 0) {
+    const chunk = this.#bytes.next();
+    if (chunk === undefined) {
       this.#framer.end();
       this.#isAtEnd = true;
-    } else this.#framer.push(chunk.subarray(0, got));
+    } else this.#framer.push(chunk);
   }
 }

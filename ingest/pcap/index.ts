@@ -1,0 +1,2 @@
+export { captureFrames } from "./capture-frames.ts";
+export { isCapture } from "./packets.ts";
