@@ -10,7 +10,7 @@ import pino, { type Logger } from "pino";
 import { asyncScheduler, from } from "rxjs";
 import { ChannelError, foldEvents, openAlerts, StoreError, WatchServerError } from "./alerts/index.ts";
 import { ConfigError, demoNetworkPath, loadNetwork, type Network, networkJsonSchema } from "./config/index.ts";
-import { openFeeds, RecordingError, replayRecordings } from "./ingest/index.ts";
+import { IncidentKeeper, openFeeds, Recorder, RecordingError, replayRecordings } from "./ingest/index.ts";
 import { type DisturbanceEvent, watchDisturbances } from "./pipeline/index.ts";
 import { checkedScenario, namedScenario, ScenarioError, scenarioNames, serveNetwork, writeScenario } from "./simulator/index.ts";
 
@@ -98,7 +98,8 @@ async function watch(flags: WatchFlags): Promise<number> {
       log,
       ...(flags.json ? {} : { terminal: process.stdout }),
     });
-    const feeds = openFeeds(network, { log, ...(flags.record ? { recordTo: flags.record } : {}) });
+    const recorder = flags.record ? new Recorder(flags.record) : undefined;
+    const feeds = openFeeds(network, { log, ...(recorder ? { recorder } : {}) });
     if (!flags.json) {
       process.stdout.write(
         `\nSpanmark watches ${network.name}: ${network.lines.length} lines, ${network.feeds.length} feeds.\nWatch page: ${alerts.url}\n`,
@@ -120,12 +121,18 @@ async function watch(flags: WatchFlags): Promise<number> {
         onProblem: ({ feedId, problem }) => log.warn({ feed: feedId }, problem),
       }),
     );
-    disturbances.subscribe((event) => alerts.record(event));
+    const keeper = recorder ? new IncidentKeeper(recorder, log) : undefined;
+    disturbances.subscribe((event) => {
+      alerts.record(event);
+      keeper?.note(event);
+    });
     const limit = flags.once ? setTimeout(stop.abort, ONCE_LIMIT_MS) : undefined;
     if (!stop.signal.aborted)
       await new Promise<void>((done) => stop.signal.addEventListener("abort", () => done(), { once: true }));
     clearTimeout(limit);
     await feeds.stop();
+    await keeper?.settle();
+    await recorder?.close();
     await alerts.stop();
     if (flags.once && !isFound) {
       log.error(`no incident was complete within ${ONCE_LIMIT_MS / 1000} s`);
@@ -136,6 +143,35 @@ async function watch(flags: WatchFlags): Promise<number> {
   } finally {
     await demo?.stop();
   }
+}
+
+interface RecordFlags {
+  network: string;
+  out: string;
+  fileMb: number;
+  fileMinutes: number;
+  keepHours: number;
+  keepGb: number;
+  address?: Map<string, string>;
+}
+
+async function record(flags: RecordFlags): Promise<number> {
+  const log = makeLog();
+  const stop = untilStopped();
+  const network = readdressed(loadNetwork(flags.network), flags.address ?? new Map());
+  const recorder = new Recorder(flags.out, {
+    fileBytes: flags.fileMb * 1e6,
+    fileS: flags.fileMinutes * 60,
+    keepS: flags.keepHours * 3600,
+    keepBytes: flags.keepGb * 1e9,
+  });
+  const feeds = openFeeds(network, { log, recorder });
+  log.info({ feeds: network.feeds.length, folder: flags.out }, "recording; Ctrl-C ends it");
+  if (!stop.signal.aborted)
+    await new Promise<void>((done) => stop.signal.addEventListener("abort", () => done(), { once: true }));
+  await feeds.stop();
+  await recorder.close();
+  return 0;
 }
 
 function locate(flags: { network: string; feed: Map<string, string>; json?: boolean }): number {
@@ -261,12 +297,28 @@ program
   .option("--port <number>", "of the watch page; 0 for any free one", wholeNumber, 8470)
   .option("--data <folder>", "where incidents are kept", "data")
   .option("--address <feed=address>", "another address for a feed, e.g. brack=tcp://127.0.0.1:4712; may be repeated", pair)
-  .option("--record <folder>", "record all frames as they come")
+  .option("--record <folder>", "record all frames as they come, and keep each incident's")
   .addHelpText("after", "\nExamples:\n  spanmark watch --demo\n  spanmark watch --network ours.yaml --data /var/lib/spanmark")
   .action((flags: WatchFlags) => {
     if (!flags.demo && !flags.network) program.error("name a network with --network, or try --demo", { exitCode: 2 });
     return finish(watch(flags));
   });
+
+program
+  .command("record")
+  .description("record the feeds of a network as they come, and nothing else")
+  .requiredOption("--network <file>", "network file")
+  .requiredOption("--out <folder>", "where to write them, a folder a feed")
+  .option("--file-mb <number>", "a new file when one is larger [MB]", wholeNumber, 64)
+  .option("--file-minutes <number>", "a new file when one spans more [min]", wholeNumber, 60)
+  .option("--keep-hours <number>", "delete older files [h]", wholeNumber, 168)
+  .option("--keep-gb <number>", "delete a feed's oldest files when it has more [GB]", wholeNumber, 20)
+  .option("--address <feed=address>", "another address for a feed; may be repeated", pair)
+  .addHelpText(
+    "after",
+    "\nExample:\n  spanmark record --network ours.yaml --out /var/lib/spanmark/recordings\nA feed's folder replays: spanmark locate --network ours.yaml --feed brack=/var/lib/spanmark/recordings/feeds/brack",
+  )
+  .action((flags: RecordFlags) => finish(record(flags)));
 
 program
   .command("check")
@@ -279,7 +331,11 @@ program
   .command("locate")
   .description("locate the faults in raw recordings")
   .requiredOption("--network <file>", "network file")
-  .requiredOption("--feed <id=recording>", "a feed's recording; may be repeated", pair)
+  .requiredOption(
+    "--feed <id=recording>",
+    "a feed's recording, its folder of recordings, or a capture (pcap, pcapng); may be repeated",
+    pair,
+  )
   .option("--json", "print one JSON object per incident")
   .addHelpText(
     "after",

@@ -2,7 +2,7 @@
 import type { Logger } from "pino";
 import { BehaviorSubject, type Observable, Subject } from "rxjs";
 import type { Network } from "../config/index.ts";
-import { RecordingWriter } from "./recording-writer.ts";
+import type { Recorder } from "./recording/recorder.ts";
 import type { TcpFeedEvents } from "./tcp-feed.ts";
 import { TcpFeed } from "./tcp-feed.ts";
 import type { FeedHealth, FrameBlock } from "./types.ts";
@@ -15,8 +15,8 @@ const LOG_EVERY_US = 60e6;
 
 export interface OpenFeedsOptions {
   readonly log: Logger;
-  /** Folder for raw recordings, one file a feed; nothing is recorded without it. */
-  readonly recordTo?: string;
+  /** Records every frame as it comes; its maker closes it. */
+  readonly recorder?: Recorder;
   /** µs since 1970 UTC. */
   readonly now?: () => number;
   /** 0..1, for the jitter of retries. */
@@ -33,18 +33,15 @@ export interface OpenFeeds {
 
 export function openFeeds(
   network: Network,
-  { log, recordTo, now = () => Date.now() * 1000, random = Math.random }: OpenFeedsOptions,
+  { log, recorder, now = () => Date.now() * 1000, random = Math.random }: OpenFeedsOptions,
 ): OpenFeeds {
   const blocks = new Subject<FrameBlock>();
-  const writers: RecordingWriter[] = [];
   const health = new BehaviorSubject<readonly FeedHealth[]>([]);
   let isNews = true;
   let ticks = 0;
   const feeds: TcpFeed[] = network.feeds.map((feed) => {
     const feedLog = log.child({ feed: feed.id });
-    const writer =
-      recordTo === undefined ? undefined : new RecordingWriter(recordTo, feed.id, "append", (words) => feedLog.error(words));
-    if (writer) writers.push(writer);
+    const writer = recorder?.writerFor(feed.id, (words) => feedLog.error(words));
     return new TcpFeed(
       feed,
       network,
@@ -76,8 +73,6 @@ export function openFeeds(
       await Promise.all(feeds.map((feed) => feed.stop()));
       blocks.complete();
       health.complete();
-      // A recording that failed has been told when it happened; it keeps nobody from stopping.
-      await Promise.allSettled(writers.splice(0).map((writer) => writer.close()));
     },
   };
 }

@@ -33,7 +33,7 @@ export async function writeScenario(
         ...scenario,
         seed: scenario.seed * 1000 + 10 * n + terminal.index,
       });
-      const writer = new RecordingWriter(folder, end.feedId, "replace");
+      const writer = new RecordingWriter(folder, end.feedId);
       writers.push(writer);
       const put = (frame: Buffer) => writer.write(frame, 0, frame.length);
       put(encodeConfig(end.config, "configuration-2", startUs));

@@ -4,9 +4,9 @@ import { join } from "node:path";
 import type { FrameDefect } from "../c37118/index.ts";
 import { captureFrames, isCapture } from "../pcap/index.ts";
 import { RecordingError } from "../recording-error.ts";
+import { RECORDING_SUFFIX } from "./file-names.ts";
 
 const CHUNK_BYTES = 64 * 1024;
-export const RECORDING_SUFFIX = ".frames";
 
 export interface RecordingBytes {
   /** The next bytes in order; undefined at the end. */

@@ -82,7 +82,7 @@ it("locates a live fault within 2 % of the line, tells it within a second, and a
     "--network",
     demoNetworkPath(),
     "--json",
-    ...feeds.flatMap((id) => ["--feed", `${id}=${join(folder, "recordings", `${id}.frames`)}`]),
+    ...feeds.flatMap((id) => ["--feed", `${id}=${join(folder, "recordings", "feeds", id)}`]),
   );
   expect(await replay.ended).toBe(0);
   const replayed = replay.lines.map((l) => JSON.parse(l) as Report);

@@ -7,7 +7,7 @@ import pino from "pino";
 import { filter, firstValueFrom, map } from "rxjs";
 import { afterEach, describe, expect, it } from "vitest";
 import type { Network } from "../../config/index.ts";
-import { encodeConfig, type OpenFeeds, openFeeds, recordingName, replayRecordings } from "../../ingest/index.ts";
+import { encodeConfig, type OpenFeeds, openFeeds, Recorder, replayRecordings } from "../../ingest/index.ts";
 import type { FeedHealth } from "../../ingest/types.ts";
 import { plainNetwork } from "../pipeline/network.ts";
 import { frameOf, startUnit, streamOf, type UnitPeer } from "./unit-peer.ts";
@@ -57,7 +57,7 @@ function clock() {
     },
   };
 }
-function watch(network: Network, options: { now?: () => number; recordTo?: string } = {}) {
+function watch(network: Network, options: { now?: () => number; recorder?: Recorder } = {}) {
   const logged: { msg: string; feed: string; defect?: string }[] = [];
   const log = pino({ level: "info" }, { write: (line: string) => void logged.push(JSON.parse(line)) });
   const feeds = openFeeds(network, { log, random: () => 0, ...options });
@@ -256,22 +256,26 @@ describe("feeds over TCP", () => {
     const folder = mkdtempSync(join(tmpdir(), "spanmark-record-"));
     const [a, b] = [await unit(1), await unit(2)];
     const network = networkAt(a.address, b.address);
-    const { feeds, rows } = watch(network, { recordTo: join(folder, "recordings") });
+    const recorder = new Recorder(join(folder, "recordings"));
+    const { feeds, rows } = watch(network, { recorder });
     await a.asked();
     const got = rows(0, 4);
     for (const slot of [0, 1, 1, 3, 2, 4]) a.send(frameOf(streamOf(1), slot));
     const { ring } = await got;
     await feeds.stop();
-    const file = join(folder, "recordings", recordingName("at-brack"));
+    await recorder.close();
+    const file = join(folder, "recordings", "feeds", "at-brack");
     const played = [...replayRecordings(network, new Map([["at-brack", file]]), pino({ level: "silent" }))];
     expect(played.map((p) => p.lastSlot - ring.newestSlot)).toEqual([-4, -3, -1, -2, 0]);
     const again = played.at(-1)!.ring;
     expect(again.phasors).toEqual(ring.phasors);
     expect(again.timeUs).toEqual(ring.timeUs);
     writeFileSync(join(folder, "taken"), "");
-    expect(() => openFeeds(network, { log: pino({ level: "silent" }), recordTo: join(folder, "taken") })).toThrow(
+    const taken = new Recorder(join(folder, "taken"));
+    expect(() => openFeeds(network, { log: pino({ level: "silent" }), recorder: taken })).toThrow(
       expect.objectContaining({ code: "unwritable" }),
     );
+    await taken.close();
     rmSync(folder, { recursive: true });
   });
 
