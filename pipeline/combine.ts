@@ -26,13 +26,13 @@ export interface Combined {
 }
 
 /**
- * @param extraSd  standard deviation to add to each answer beyond what the draws hold, fraction of the line: what the fit leaves unexplained
+ * @param extraSdOf  standard deviation to add to an answer from these ends beyond what the draws hold, fraction of the line: what the model cannot know
  * @returns undefined when no method gave a usable answer
  */
 export function combine(
   line: Line,
   evidence: Evidence,
-  extraSd: number,
+  extraSdOf: (ends: readonly number[]) => number,
   framesOf: (ends: readonly number[]) => string,
   stationsOf: (ends: readonly number[]) => string[],
 ): Combined | undefined {
@@ -45,7 +45,8 @@ export function combine(
   const used = shown.filter((k) => !answers[k]!.isOnlyShown);
   if (used.length === 0) return undefined;
   const whole = draws.filter((d) => used.every((k) => Number.isFinite(d[k]!)));
-  const covariance = covarianceOf(whole, used, extraSd);
+  const extra = used.map((k) => extraSdOf(answers[k]!.ends));
+  const covariance = covarianceOf(whole, used, extra);
   const weights = bestWeights(covariance);
   const n = used.length;
   const m = (i: number) => answers[used[i]!]!.m;
@@ -56,19 +57,27 @@ export function combine(
       const variance = covariance[i]![i]! + covariance[j]![j]! - 2 * covariance[i]![j]!;
       const apart = Math.abs(m(i) - m(j));
       if (weights[i]! > 0 && weights[j]! > 0) spread = Math.max(spread, apart);
-      if (apart ** 2 > QUARREL * Math.max(variance, extraSd ** 2)) isQuarrel = true;
+      if (apart ** 2 > QUARREL * Math.max(variance, extra[i]! ** 2, extra[j]! ** 2)) isQuarrel = true;
     }
   }
   const parts = isQuarrel
-    ? quarrelParts(used.map((_, i) => ({ at: m(i), sd: Math.sqrt(covariance[i]![i]!), spread: whole.map((d) => d[used[i]!]!) })))
+    ? quarrelParts(
+        used.map((_, i) => ({
+          at: m(i),
+          sd: Math.sqrt(covariance[i]![i]!),
+          extraSd: extra[i]!,
+          spread: whole.map((d) => d[used[i]!]!),
+        })),
+      )
     : [
         {
           share: 1,
+          extraSd: Math.sqrt(weights.reduce((s, w, i) => s + (w * extra[i]!) ** 2, 0)),
           at: weights.reduce((s, w, i) => s + w * m(i), 0),
           spread: whole.map((d) => weights.reduce((s, w, i) => s + w * d[used[i]!]!, 0)),
         },
       ];
-  const perStep = densityOf(parts, extraSd);
+  const perStep = densityOf(parts);
   const stepKm = line.lengthKm / STEPS;
   const pieces = smallestPieces(perStep, stepKm, line.towers);
   const mode = isQuarrel ? (perStep.indexOf(Math.max(...perStep)) + 0.5) / STEPS : Math.min(1, Math.max(0, parts[0]!.at));
@@ -87,7 +96,7 @@ export function combine(
         method: answer.method,
         terminals: stationsOf(answer.ends),
         km: answer.m * line.lengthKm,
-        sdKm: Math.hypot(deviation(own), extraSd) * line.lengthKm,
+        sdKm: Math.hypot(deviation(own), extraSdOf(answer.ends)) * line.lengthKm,
         weight: i < 0 ? 0 : weights[i]!,
         witness: answer.witness,
         frames: framesOf(answer.ends),
@@ -105,12 +114,12 @@ function deviation(x: readonly number[]): number {
   return Math.sqrt(x.reduce((s, v) => s + (v - mean) ** 2, 0) / Math.max(1, x.length - 1));
 }
 
-function covarianceOf(draws: readonly Float64Array[], used: readonly number[], extraSd: number): number[][] {
+function covarianceOf(draws: readonly Float64Array[], used: readonly number[], extra: readonly number[]): number[][] {
   const means = used.map((k) => meanOf(draws.map((d) => d[k]!)));
   return used.map((k, i) =>
     used.map((l, j) => {
       const shared = draws.reduce((s, d) => s + (d[k]! - means[i]!) * (d[l]! - means[j]!), 0) / Math.max(1, draws.length - 1);
-      return shared + (i === j ? extraSd ** 2 : 0);
+      return shared + (i === j ? extra[i]! ** 2 : 0);
     }),
   );
 }
@@ -141,23 +150,24 @@ function bestWeights(covariance: readonly (readonly number[])[]): number[] {
 
 interface Part {
   readonly share: number;
+  readonly extraSd: number;
   readonly at: number;
   readonly spread: readonly number[];
 }
 
 /** Each answer for itself, by its precision, none below a tenth: a sure method can be wrong too. */
-function quarrelParts(each: readonly { at: number; sd: number; spread: readonly number[] }[]): Part[] {
+function quarrelParts(each: readonly { at: number; sd: number; extraSd: number; spread: readonly number[] }[]): Part[] {
   const precision = each.map((e) => 1 / e.sd ** 2);
   const total = precision.reduce((s, p) => s + p, 0);
   const raw = precision.map((p) => Math.max(p / total, 0.1));
   const sum = raw.reduce((s, p) => s + p, 0);
-  return each.map((e, i) => ({ share: raw[i]! / sum, at: e.at, spread: e.spread }));
+  return each.map((e, i) => ({ share: raw[i]! / sum, at: e.at, extraSd: e.extraSd, spread: e.spread }));
 }
 
 /** Chance in each step of the line: a kernel estimate of every part (Silverman's rule), centred on its answer, cut to the line, summing to one. */
-function densityOf(parts: readonly Part[], extraSd: number): number[] {
+function densityOf(parts: readonly Part[]): number[] {
   const out = new Array<number>(STEPS).fill(0);
-  for (const { share, at, spread } of parts) {
+  for (const { share, at, spread, extraSd } of parts) {
     const centre = meanOf(spread);
     const width = Math.max(Math.hypot(1.06 * deviation(spread) * spread.length ** -0.2, extraSd), 0.5 / STEPS);
     for (const x of spread) {

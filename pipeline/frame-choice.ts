@@ -9,6 +9,9 @@ import type { MeasuringWindow } from "./measuring-window.ts";
 import { NUMBERS_PER_ROW } from "./terminal-view.ts";
 import { PROFILE, prepareEnd, statesAt, type Timing } from "./unmix.ts";
 
+/** How phasors came about, in words: from the states of the fit. */
+export const UNMIXED = "unmixed";
+
 const CHANNELS = 6;
 
 /** Frame n turned back to the epoch. */
@@ -108,7 +111,7 @@ export function unmixedPhasors(
       fault: states.fault,
       preSd: states.preSd,
       faultSd: states.faultSd,
-      frames: "unmixed",
+      frames: UNMIXED,
     },
     residual: states.residual,
   };

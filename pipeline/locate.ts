@@ -7,7 +7,7 @@ import { judge } from "./direction.ts";
 import { type EndPhasors, type Evidence, faultCurrents, gatherEvidence, NEGATIVE_TWO_ENDED } from "./evidence.ts";
 import { phasesOf } from "./fault-loop.ts";
 import { flagOf } from "./flag.ts";
-import { mixedFrame, unmixedPhasors, wholeWindowPhasors } from "./frame-choice.ts";
+import { mixedFrame, UNMIXED, unmixedPhasors, wholeWindowPhasors } from "./frame-choice.ts";
 import type { MeasuringWindow } from "./measuring-window.ts";
 import { selectPhases } from "./phase-selection.ts";
 import { roughTiming } from "./rough-timing.ts";
@@ -45,6 +45,7 @@ export type Finding =
 const PLACE_ERROR_OF_RESIDUAL = 0.3;
 /** Floor of what no draw covers (formulas, sampling), fraction of the line. */
 const PLACE_ERROR_FLOOR = 0.0007;
+const UNMIXING_ERROR = 0.0005;
 /** Error of superimposed positive sequence on a frame whose window already reaches past the clearing, fraction of the line. */
 const MIXED_POSITIVE_ERROR = 0.008;
 
@@ -179,16 +180,19 @@ function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Pha
   const { type, marginDegrees } = selectPhases(faultCurrents(ends));
   const all = gatherEvidence(line, type, ends);
   const evidence = isMixed ? mixedEvidence(all) : all;
-  const extraSd = Math.hypot(
+  const shared = Math.hypot(
     PLACE_ERROR_FLOOR,
     PLACE_ERROR_OF_RESIDUAL * (residual ?? 0),
     isMixed && type === "ABC" ? MIXED_POSITIVE_ERROR : 0,
   );
+  // What both ends unmix wrongly alike drops out between them; one end has it all.
+  const alone = Math.max(...ends.map((end) => unmixingError(x, end, timing)));
+  const extraSdOf = (used: readonly number[]) => (used.length > 1 ? shared : Math.hypot(shared, alone));
   const stationOf = (e: number) => ends[e]!.terminal.stationId;
   const combined = combine(
     line,
     evidence,
-    extraSd,
+    extraSdOf,
     (used) => [...new Set(used.map((e) => ends[e]!.frames))].join("; "),
     (used) => used.map(stationOf),
   );
@@ -221,6 +225,16 @@ function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Pha
     estimates: combined.estimates,
     density: combined.density,
   };
+}
+
+/**
+ * Error of one end's place that unmixing leaves, fraction of the line: it grows with the square of window over fault duration, since the less of a window lies in
+ * the fault the more the clearing's unknown profile counts. Measured on noise-free campaigns: 0.35 % with M class at 60 frames/s, 1.1 % at 30, for 50-120 ms.
+ */
+function unmixingError(x: LineDisturbance, end: EndPhasors, timing: Timing): number {
+  const captured = x.ends.find((c) => c.capture.terminal.id === end.terminal.id);
+  if (!captured || end.frames !== UNMIXED || !Number.isFinite(timing.clearingS)) return 0;
+  return UNMIXING_ERROR * Math.min(60, ((2 * captured.window.halfS) / (timing.clearingS - timing.onsetS)) ** 2);
 }
 
 /**

@@ -18,7 +18,7 @@ export interface CampaignOptions {
   readonly noise: number;
   /** 1: instrument errors anywhere within class 0.5. */
   readonly instrumentErrors: number;
-  /** Relative standard error of the locator's line constants. */
+  /** Each of R1, X1, R0, X0 that the locator believes is off by up to this share, evenly spread. */
   readonly constantError: number;
 }
 
@@ -99,14 +99,14 @@ export function campaignCase(n: number, options: CampaignOptions): CampaignCase 
   const opens: [number, number] = random.uniform() < 0.5 ? [durationS - gap, durationS] : [durationS, durationS - gap];
   const never = [Number.POSITIVE_INFINITY, Number.POSITIVE_INFINITY] as const;
   course.plan(onsetUs, fault, [Math.max(0.03, opens[0] - 0.008), Math.max(0.03, opens[1] - 0.008)], never);
-  const off = () => 1 + options.constantError * random.normal();
+  const off = () => 1 + options.constantError * between(-1, 1);
   const { z1, z0, ...rest } = line.constants;
   const believed = {
     ...rest,
     z1: { re: z1.re * off(), im: z1.im * off() },
     z0: { re: z0.re * off(), im: z0.im * off() },
-    z1Percent: 100 * options.constantError || 0.01,
-    z0Percent: 100 * options.constantError || 0.01,
+    z1Percent: (100 * options.constantError) / Math.sqrt(3) || 0.01,
+    z0Percent: (100 * options.constantError) / Math.sqrt(3) || 0.01,
   };
   return { fault, onsetUs, durationS, course, seed: Math.floor(random.uniform() * 1e9), believed };
 }
