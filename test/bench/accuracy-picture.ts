@@ -15,7 +15,7 @@ const ROW = 64;
 const x = (percent: number) => LEFT + (WIDTH * Math.log10(Math.min(30, Math.max(0.01, percent)) / 0.01)) / Math.log10(3000);
 
 export function accuracyPicture(rows: readonly PictureRow[], caption: string): string {
-  const height = 70 + rows.length * ROW + 60;
+  const height = 70 + rows.length * ROW + 80;
   const parts = [
     `<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 ${LEFT + WIDTH + 40} ${height}" font-family="sans-serif" font-size="15" fill="#22262a">`,
     `<rect width="100%" height="100%" fill="#fbfaf6"/>`,
@@ -23,7 +23,7 @@ export function accuracyPicture(rows: readonly PictureRow[], caption: string): s
   ];
   for (const tick of [0.01, 0.03, 0.1, 0.3, 1, 3, 10, 30]) {
     parts.push(
-      `<path d="M${x(tick)} 50 V${height - 60}" stroke="#c9c5b8"/><text x="${x(tick)}" y="${height - 42}" text-anchor="middle">${tick}</text>`,
+      `<path d="M${x(tick)} 50 V${height - 80}" stroke="#c9c5b8"/><text x="${x(tick)}" y="${height - 62}" text-anchor="middle">${tick}</text>`,
     );
   }
   rows.forEach((row, k) => {
@@ -38,7 +38,8 @@ export function accuracyPicture(rows: readonly PictureRow[], caption: string): s
     );
   });
   parts.push(
-    `<text x="20" y="${height - 16}" font-size="14"><tspan fill="#1e4f8a">■</tspan> this program  <tspan fill="#77797a">■</tspan> textbook method on the mid-fault frame  <tspan fill="#b3470f">┃</tspan> the bars set (median, 90th percentile). ${caption}</text>`,
+    `<text x="20" y="${height - 36}" font-size="14"><tspan fill="#1e4f8a">■</tspan> this program  <tspan fill="#77797a">■</tspan> textbook method on the mid-fault frame  <tspan fill="#b3470f">┃</tspan> the bars set (median, 90th percentile)</text>`,
+    `<text x="20" y="${height - 14}" font-size="14">${caption}</text>`,
     "</svg>",
   );
   return `${parts.join("\n")}\n`;
