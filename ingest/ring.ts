@@ -9,6 +9,23 @@ const KEPT_S = 16;
 const JUMP_US = 10e6;
 const DAY_S = 86_400;
 
+/** Looked at before memory is taken: a broken configuration frame may claim anything. The widest stream that a configuration 2 can describe, some 3,200 phasors, needs a fifth of it at 60 frames/s. */
+const LARGEST_RING_BYTES = 256e6;
+/** Far above what units send (120 frames/s in the standard's tables, from memory). */
+const HIGHEST_RATE_HZ = 1000;
+
+const rowsFor = (config: StreamConfig): number => 2 ** Math.ceil(Math.log2(Math.max(64, KEPT_S * config.reportingRateHz)));
+
+/** Why no ring is made for such a stream, in words; undefined when one can be. */
+export function ringProblem(config: StreamConfig): string | undefined {
+  const { reportingRateHz, units } = config;
+  if (reportingRateHz > HIGHEST_RATE_HZ) return `${reportingRateHz} frames/s; at most ${HIGHEST_RATE_HZ} are read`;
+  const bytes = rowsFor(config) * (25 + units.reduce((sum, unit) => sum + 16 * unit.phasors.length + 18, 0));
+  if (bytes > LARGEST_RING_BYTES)
+    return `its last ${KEPT_S} s need ${Math.round(bytes / 1e6)} MB, at most ${LARGEST_RING_BYTES / 1e6} are given: split the stream`;
+  return undefined;
+}
+
 export type Placement = "new" | "duplicate" | "too-late" | "doubtful-time" | "leap-second";
 
 export class WritableRing implements FrameRing {
@@ -45,7 +62,7 @@ export class WritableRing implements FrameRing {
     );
     this.units = config.units.map(({ idCode, name, nominalHz }) => ({ idCode, name, nominalHz }));
     this.periodUs = 1e6 / config.reportingRateHz;
-    this.capacity = 2 ** Math.ceil(Math.log2(Math.max(64, KEPT_S * config.reportingRateHz)));
+    this.capacity = rowsFor(config);
     const rows = this.capacity;
     this.timeUs = new Float64Array(rows);
     this.arrivedUs = new Float64Array(rows);

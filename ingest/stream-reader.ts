@@ -15,7 +15,7 @@ import {
   type StreamConfig,
   typeOf,
 } from "./c37118/index.ts";
-import { WritableRing } from "./ring.ts";
+import { ringProblem, WritableRing } from "./ring.ts";
 
 /** A CFG-2 of the same stream may be this large however small its data frames are. */
 const LARGEST_BEFORE_CONFIGURATION = 65_535;
@@ -126,6 +126,8 @@ export class StreamReader {
         return true;
       }
       config = type === "configuration-2" ? decodeConfig(bytes, at, size) : decodeConfig3(said, this.feed.idCode);
+      const problem = ringProblem(config);
+      if (problem) throw new BadConfiguration(problem);
     } catch (error) {
       if (!(error instanceof BadConfiguration)) throw error;
       this.#defect("bad-configuration", `configuration frame cannot be used: ${error.message}`);

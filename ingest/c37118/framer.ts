@@ -12,21 +12,37 @@ export type Look =
   | { readonly kind: "wait"; readonly bytes: number }
   | { readonly kind: "defect"; readonly code: FrameDefect; readonly skipBytes: number };
 
+/** The answers, one of each kind for all looks: a frame then costs no allocation. An answer holds until the next look. */
+const answers = {
+  frame: { kind: "frame" as const, bytes: 0 },
+  wait: { kind: "wait" as const, bytes: 0 },
+  defect: { kind: "defect" as const, code: "no-sync" as FrameDefect, skipBytes: 0 },
+};
+function found<K extends "frame" | "wait">(kind: K, bytes: number): (typeof answers)[K] {
+  answers[kind].bytes = bytes;
+  return answers[kind];
+}
+function defect(code: FrameDefect, skipBytes: number): Look {
+  answers.defect.code = code;
+  answers.defect.skipBytes = skipBytes;
+  return answers.defect;
+}
+
 /** @param largest  frames above this are a false start: from the configuration, so that one cannot hold the queue for long */
 export function lookAt(bytes: Uint8Array, at: number, end: number, largest: number): Look {
   if (bytes[at] !== SYNC_BYTE) {
     let skip = 1;
     while (at + skip < end && bytes[at + skip] !== SYNC_BYTE) skip++;
-    return { kind: "defect", code: "no-sync", skipBytes: skip };
+    return defect("no-sync", skip);
   }
-  if (end - at < 4) return { kind: "wait", bytes: 4 };
-  if (typeOf(bytes[at + 1]!) === undefined) return { kind: "defect", code: "unknown-frame-type", skipBytes: 1 };
+  if (end - at < 4) return found("wait", 4);
+  if (typeOf(bytes[at + 1]!) === undefined) return defect("unknown-frame-type", 1);
   const size = (bytes[at + 2]! << 8) | bytes[at + 3]!;
-  if (size < SMALLEST_FRAME_BYTES || size > largest) return { kind: "defect", code: "size-out-of-bounds", skipBytes: 1 };
-  if (end - at < size) return { kind: "wait", bytes: size };
+  if (size < SMALLEST_FRAME_BYTES || size > largest) return defect("size-out-of-bounds", 1);
+  if (end - at < size) return found("wait", size);
   const stated = (bytes[at + size - 2]! << 8) | bytes[at + size - 1]!;
-  if (crcCcitt(bytes, at, at + size - 2) !== stated) return { kind: "defect", code: "bad-crc", skipBytes: 1 };
-  return { kind: "frame", bytes: size };
+  if (crcCcitt(bytes, at, at + size - 2) !== stated) return defect("bad-crc", 1);
+  return found("frame", size);
 }
 
 export interface FramerSink {
@@ -75,8 +91,9 @@ export class Framer {
         this.#append(chunk.subarray(used));
         return;
       }
-      this.#act(look, chunk, used);
+      const at = used;
       used += look.kind === "frame" ? look.bytes : look.skipBytes;
+      this.#act(look, chunk, at);
     }
   }
 
@@ -88,12 +105,13 @@ export class Framer {
   }
 
   #act(look: Exclude<Look, { kind: "wait" }>, bytes: Uint8Array, at: number): void {
+    const offset = this.#offset;
     if (look.kind === "frame") {
-      this.#sink.frame(bytes, at, look.bytes);
       this.#offset += look.bytes;
+      this.#sink.frame(bytes, at, look.bytes);
     } else {
-      this.#sink.defect(look.code, this.#offset, look.skipBytes);
       this.#offset += look.skipBytes;
+      this.#sink.defect(look.code, offset, look.skipBytes);
     }
   }
 

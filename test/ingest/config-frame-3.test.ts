@@ -175,3 +175,14 @@ it("one frame in ten seconds: its rows stand at tens of seconds", () => {
   expect(rows.map((slot) => slot - rows[0]!)).toEqual([0, 1, 3]);
   expect(reader.missingFrames).toBe(1);
 });
+
+it("a configuration that would take too much memory, or claims an impossible rate, is refused before any is taken", () => {
+  const { reader } = reading();
+  const channels = Array.from({ length: 3000 }, (_, k) => ({ name: "", kind: "voltage" as const, perBit: 1 + k }));
+  const wide = streamOf(241, [], 240);
+  const units = [{ ...wide.units[0]!, phasorsAreFloat: false, phasors: channels }];
+  reader.push(encodeConfig({ ...wide, units, reportingRateHz: 960 }, "configuration-2", TIME_US));
+  reader.push(encodeConfig({ ...streamOf(241), reportingRateHz: 32_767 }, "configuration-2", TIME_US));
+  expect(reader.config).toBeUndefined();
+  expect(reader.defects["bad-configuration"]).toBe(2);
+});
