@@ -25,6 +25,9 @@ const SETTLED_US = 10e6;
 /** What a stopping feed waits for its last command to leave. */
 const FAREWELL_MS = 250;
 
+/** Every feed's bytes land here and are used up before the next read: no memory is taken for each. */
+const landing = new Uint8Array(64 * 1024);
+
 export interface TcpFeedEvents {
   readonly onBlock: (block: FrameBlock) => void;
   readonly onFrame?: (bytes: Uint8Array, at: number, size: number) => void;
@@ -129,7 +132,6 @@ export class TcpFeed {
     const socket = this.#socket;
     this.#socket = undefined;
     if (!socket) return Promise.resolve();
-    socket.removeAllListeners("data");
     socket.resume();
     if (socket.connecting) socket.destroy();
     else socket.end(encodeCommand(this.#feed.idCode, "data-off", this.#now()));
@@ -150,7 +152,16 @@ export class TcpFeed {
       this.#nextTryUs = Number.POSITIVE_INFINITY;
       return;
     }
-    const socket = connect(address);
+    const socket = connect({
+      ...address,
+      onread: {
+        buffer: landing,
+        callback: (size, bytes) => {
+          if (this.#socket === socket) this.#read(bytes.subarray(0, size));
+          return true;
+        },
+      },
+    });
     this.#socket = socket;
     socket.setNoDelay(true);
     this.#await("connection", "connecting", `connecting to ${this.#feed.address}`);
@@ -160,9 +171,6 @@ export class TcpFeed {
       socket.write(encodeCommand(this.#feed.idCode, "data-off", this.#now()));
       socket.write(encodeCommand(this.#feed.idCode, "send-configuration-2", this.#now()));
     });
-    socket.on("data", (chunk) => {
-      if (this.#socket === socket) this.#read(chunk);
-    });
     socket.on("error", (error) => {
       if (this.#socket === socket) this.#drop("unreachable", `${this.#feed.address} cannot be reached: ${wordsOf(error)}`);
     });
@@ -171,7 +179,7 @@ export class TcpFeed {
     });
   }
 
-  #read(chunk: Buffer): void {
+  #read(chunk: Uint8Array): void {
     const arrivedUs = this.#now();
     this.#first = -1;
     this.#last = -1;

@@ -68,7 +68,7 @@ for (const count of [10, 100, 500, 1000, feeds].filter((n, k, all) => n <= feeds
   const ours = await run("ingest", count, forS);
   growth.push({ feeds: count, bare, ours, ratio: ours.cpuUsPerFrame / bare.cpuUsPerFrame });
   console.log(
-    `${count} feeds at 60 frames/s over TCP, ${fixed(ours.seconds, 0)} s: ${fixed(ours.frames / ours.seconds, 0)} frames/s, lost ${ours.lost}, feeds with defects ${ours.feedsWithDefects}, live ${ours.live}
+    `${count} feeds at 60 frames/s over TCP, ${fixed(ours.seconds, 0)} s: ${fixed(ours.frames / ours.seconds, 0)} frames/s of ${60 * count} due, lost between sender and ring ${ours.lost}, feeds with defects ${ours.feedsWithDefects}, live ${ours.live}
   processor per frame ${fixed(ours.cpuUsPerFrame)} µs, bare drain ${fixed(bare.cpuUsPerFrame)} µs (${fixed(bare.frames / bare.seconds, 0)} frames/s): ${fixed(ours.cpuUsPerFrame / bare.cpuUsPerFrame)} times (bar 1.6); busy ${fixed(100 * ours.busy, 0)} %
   sent to ring: median ${ours.medianMs} ms, 99 % ${ours.p99Ms} ms (bar 20), worst ${ours.worstMs} ms`,
   );

@@ -66,12 +66,17 @@ async function ingest(): Promise<object> {
   let isMeasuring = false;
   /** Latencies in classes of 0.1 ms; the last holds all beyond. */
   const classes = new Uint32Array(10_001);
-  feeds.blocks.subscribe(({ ring, firstSlot, lastSlot }) => {
+  const numbers = new Map<string, number>();
+  let lost = 0;
+  feeds.blocks.subscribe(({ feedId, ring, firstSlot, lastSlot }) => {
     const nowUs = (performance.timeOrigin + performance.now()) * 1000;
     for (let slot = firstSlot; slot <= lastSlot; slot++) {
       const row = ring.rowOf(slot);
       if (row < 0) continue;
       frames++;
+      const number = ring.frequencyHz[row]!;
+      lost += number - (numbers.get(feedId) ?? number - 1) - 1;
+      numbers.set(feedId, number);
       if (isMeasuring)
         classes[Math.max(0, Math.min(10_000, Math.floor((nowUs - ring.timeUs[row]! - ring.rocofHzPerS[row]!) / 100)))]!++;
     }
@@ -89,12 +94,11 @@ async function ingest(): Promise<object> {
     });
     return at / 10;
   };
-  let health: readonly { state: string; missingFrames: number; defects: object }[] = [];
+  let health: readonly { state: string; defects: object }[] = [];
   feeds.health.subscribe((now) => {
     health = now;
   });
   await pause(1500);
-  const lost = health.reduce((sum, h) => sum + h.missingFrames, 0);
   const defects = health.filter((h) => Object.keys(h.defects).length > 0).length;
   const live = health.filter((h) => h.state === "live").length;
   void feeds.stop();
