@@ -5,6 +5,8 @@ import type { Flag, LocateStage } from "./types.ts";
 /** `firm`: a crew searches a few spans. `fair`: an hour on foot or one flight leg. Both of the line's length, since phasor errors grow with it. */
 const FIRM_STRETCH = 0.02;
 const FAIR_STRETCH = 0.08;
+/** Answers further apart than this share of the line do not agree, whatever their own spreads allow. */
+const SPREAD = 0.04;
 /** Residual of the unmixing fit (relative) under which nearly all fits are good, and over which the fit says that its model is wrong. Measured on the
  * simulator's campaigns. */
 const GOOD_RESIDUAL = 0.005;
@@ -29,8 +31,10 @@ export interface FlagInputs {
 export function flagOf(x: FlagInputs): { flag: Flag; reasons: string[] } {
   const width = x.combined.pieces.reduce((s, p) => s + p.highKm - p.lowKm, 0) / x.lengthKm;
   const reasons: string[] = [];
+  const isSpread = x.combined.spreadKm > SPREAD * x.lengthKm;
   if (x.measuredAt.length >= 2) {
     if (x.combined.isQuarrel) reasons.push(`methods disagree by up to ${x.combined.spreadKm.toFixed(1)} km: each place is shown`);
+    else if (isSpread) reasons.push(`answers spread over ${x.combined.spreadKm.toFixed(1)} km`);
     else reasons.push(`both ends agree within ${Math.max(0.1, x.combined.spreadKm).toFixed(1)} km`);
   } else {
     reasons.push(`one end only (${x.measuredAt.join(", ")})`);
@@ -49,7 +53,11 @@ export function flagOf(x: FlagInputs): { flag: Flag; reasons: string[] } {
   if (x.isStillOn) reasons.push("fault current still flows");
   if (x.stage === "provisional") reasons.push("so far: more frames to come");
   const isDoubtful =
-    x.combined.isQuarrel || (x.residual ?? 0) > POOR_RESIDUAL || x.unsynchronisedAt.length > 0 || x.phaseMarginDegrees < 8;
+    x.combined.isQuarrel ||
+    isSpread ||
+    (x.residual ?? 0) > POOR_RESIDUAL ||
+    x.unsynchronisedAt.length > 0 ||
+    x.phaseMarginDegrees < 8;
   const flag: Flag =
     width <= FIRM_STRETCH && !isDoubtful && x.measuredAt.length >= 2
       ? "firm"
