@@ -26,6 +26,8 @@ export interface FlagInputs {
   readonly missingFrames: number;
   readonly unsynchronisedAt: readonly string[];
   readonly isStillOn: boolean;
+  /** What stands on this line that no method allows for, in words. */
+  readonly unmodelled: readonly string[];
 }
 
 export function flagOf(x: FlagInputs): { flag: Flag; reasons: string[] } {
@@ -50,11 +52,13 @@ export function flagOf(x: FlagInputs): { flag: Flag; reasons: string[] } {
   if (x.phaseMarginDegrees < 8) reasons.push("phases close to call");
   if (x.missingFrames > 0) reasons.push(`${x.missingFrames} frame${x.missingFrames === 1 ? "" : "s"} missing`);
   for (const station of x.unsynchronisedAt) reasons.push(`clock at ${station} not synchronised`);
+  reasons.push(...x.unmodelled);
   if (x.isStillOn) reasons.push("fault current still flows");
   if (x.stage === "provisional") reasons.push("so far: more frames to come");
   const isDoubtful =
     x.combined.isQuarrel ||
     isSpread ||
+    x.unmodelled.length > 0 ||
     (x.residual ?? 0) > POOR_RESIDUAL ||
     x.unsynchronisedAt.length > 0 ||
     x.phaseMarginDegrees < 8;

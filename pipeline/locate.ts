@@ -5,7 +5,7 @@ import { type Combined, combine, towerSpan } from "./combine.ts";
 import { abs } from "./complex.ts";
 import { judge } from "./direction.ts";
 import { type EndPhasors, type Evidence, faultCurrents, gatherEvidence, NEGATIVE_TWO_ENDED } from "./evidence.ts";
-import { phasesOf } from "./fault-loop.ts";
+import { isGrounded, phasesOf } from "./fault-loop.ts";
 import { flagOf } from "./flag.ts";
 import { mixedFrame, UNMIXED, unmixedPhasors, wholeWindowPhasors } from "./frame-choice.ts";
 import type { MeasuringWindow } from "./measuring-window.ts";
@@ -209,6 +209,7 @@ function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Pha
     phaseMarginDegrees: marginDegrees,
     missingFrames: x.ends.reduce((s, e) => s + e.capture.missingFrames, 0),
     unsynchronisedAt: x.ends.filter((e) => !e.capture.isSynchronised).map((e) => x.stationName(e.capture.terminal.stationId)),
+    unmodelled: unmodelledOn(line, type, ends, x.stationName),
     isStillOn: x.stage !== "provisional" && timing.clearingS === Number.POSITIVE_INFINITY,
   });
   const spanTowers = towerSpan(line.towers, combined.km, combined.km);
@@ -225,6 +226,18 @@ function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Pha
     estimates: combined.estimates,
     density: combined.density,
   };
+}
+
+/** What the network file says stands on the line and these ends' methods do not allow for: the place may then err by far more than its stretch says. */
+function unmodelledOn(line: Line, type: FaultType, ends: readonly EndPhasors[], stationName: (id: string) => string): string[] {
+  const found: string[] = [];
+  if (line.seriesCapacitor) found.push("series capacitor on this line is not allowed for");
+  if (ends.length < 2) {
+    if (line.parallel && isGrounded(type)) found.push("coupling with the parallel circuit is not allowed for");
+    const converter = line.terminals.find((t) => t.source === "converter" && !ends.some((e) => e.terminal.id === t.id));
+    if (converter) found.push(`converter at ${stationName(converter.stationId)} is taken for a usual source`);
+  }
+  return found;
 }
 
 /**

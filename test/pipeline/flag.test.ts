@@ -25,6 +25,7 @@ const flag = (over: Partial<FlagInputs> = {}) =>
     missingFrames: 0,
     unsynchronisedAt: [],
     isStillOn: false,
+    unmodelled: [],
     ...over,
   });
 
@@ -54,6 +55,7 @@ describe("the flag", () => {
     [{ residual: 0.021 }, /poor fit, 2.1 % unexplained/],
     [{ unsynchronisedAt: ["Tolva"] }, /clock at Tolva not synchronised/],
     [{ phaseMarginDegrees: 7 }, /phases close to call/],
+    [{ unmodelled: ["series capacitor on this line is not allowed for"] }, /series capacitor/],
   ])("is rough with its reason: %j", (over, reason) => {
     const { flag: got, reasons } = flag(over);
     expect(got).toBe("rough");

@@ -116,3 +116,18 @@ describe("what is no fault on the line", () => {
     );
   });
 });
+
+it("what stands on a line and no method allows for makes the place rough, with the reason", () => {
+  const { a, b } = faultOf({ type: "AG", m: 0.3, ohm: 2 });
+  const plain = plainNetwork([M60, M60]);
+  const line = { ...plain.lines[0]!, seriesCapacitor: { atKm: 0, reactanceOhm: 20, voltageTransformer: "busSide" as const } };
+  const last = settled(run({ ...plain, lines: [line] }, [a, b], course(0.08)))!;
+  expect(last.location.flag).toBe("rough");
+  expect(last.location.reasons).toContain("series capacitor on this line is not allowed for");
+  const oneEnd = plainNetwork([M60, undefined]);
+  const [near, far] = oneEnd.lines[0]!.terminals;
+  const fed = { ...oneEnd.lines[0]!, terminals: [near!, { ...far!, source: "converter" as const }] };
+  expect(settled(run({ ...oneEnd, lines: [fed] }, [a, undefined], course(0.08)))!.location.reasons).toContain(
+    "converter at Tolva is taken for a usual source",
+  );
+});
