@@ -72,6 +72,8 @@ export async function startWatchServer(options: WatchServerOptions): Promise<Wat
     // A page of another origin must not read the room's state or acknowledge for somebody.
     const origin = request.headers.origin;
     if (request.url !== "/live" || (origin !== undefined && origin !== own && origin !== own.replace("127.0.0.1", "localhost"))) {
+      // The peer may be gone already; nobody else listens for that here.
+      socket.on("error", () => socket.destroy());
       socket.end("HTTP/1.1 403 Forbidden\r\nConnection: close\r\n\r\n");
       return;
     }
@@ -121,12 +123,29 @@ function hear(ws: WebSocket, text: string, options: WatchServerOptions): void {
     return;
   }
   const read = toServer.safeParse(parsed);
-  const refusal = read.success ? options.acknowledge(read.data.incident, read.data.by) : z.prettifyError(read.error);
+  const refusal = read.success ? acknowledge(read.data.incident, read.data.by, options) : z.prettifyError(read.error);
   if (refusal !== undefined) ws.send(JSON.stringify({ kind: "refused", reason: refusal }));
 }
 
+function acknowledge(incident: string, by: string, options: WatchServerOptions): string | undefined {
+  try {
+    return options.acknowledge(incident, by);
+  } catch (error) {
+    return `the acknowledgement of ${incident} could not be stored: ${(error as Error).message}. See the data folder's disk`;
+  }
+}
+
+/** Decoded; one that cannot be read names nothing here. */
+function pathOf(request: IncomingMessage): string {
+  try {
+    return decodeURIComponent(new URL(request.url ?? "/", "http://x").pathname);
+  } catch {
+    return "";
+  }
+}
+
 function answer(request: IncomingMessage, response: ServerResponse, folder: string, options: WatchServerOptions): void {
-  const path = new URL(request.url ?? "/", "http://x").pathname;
+  const path = pathOf(request);
   if (request.method !== "GET" && request.method !== "HEAD") {
     response.writeHead(405, { ...HEADERS, Allow: "GET, HEAD" }).end();
     return;
@@ -135,7 +154,7 @@ function answer(request: IncomingMessage, response: ServerResponse, folder: stri
     response.writeHead(200, { ...HEADERS, "Content-Type": "application/json" }).end(JSON.stringify(options.health()));
     return;
   }
-  const file = normalize(join(folder, path === "/" ? "index.html" : decodeURIComponent(path)));
+  const file = normalize(join(folder, path === "/" ? "index.html" : path));
   if (!file.startsWith(folder + sep) || !existsSync(file) || !statSync(file).isFile()) {
     response
       .writeHead(404, { ...HEADERS, "Content-Type": "text/plain; charset=utf-8" })

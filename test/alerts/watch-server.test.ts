@@ -1,6 +1,6 @@
 /** The watch server with a real WebSocket client and real requests on loopback. */
 
-import { mkdtempSync, rmSync } from "node:fs";
+import { existsSync, mkdtempSync, rmSync } from "node:fs";
 import { request } from "node:http";
 import { tmpdir } from "node:os";
 import { join } from "node:path";
@@ -111,7 +111,7 @@ describe("the watch server", () => {
     });
   });
 
-  it("says in words that its port is taken, and leaves nothing open", async () => {
+  it("says in words that its port is taken, and leaves no store open", async () => {
     const { port } = new URL(alerts.url);
     const other = mkdtempSync(join(tmpdir(), "spanmark-watch-"));
     const attempt = openAlerts(
@@ -120,6 +120,24 @@ describe("the watch server", () => {
     );
     await expect(attempt).rejects.toThrow(WatchServerError);
     await expect(attempt).rejects.toThrow(`port ${port} is taken: choose another with --port, or 0 for any free one`);
+    // A closed database takes its log with it.
+    expect(existsSync(join(other, "incidents.sqlite"))).toBe(true);
+    expect(existsSync(join(other, "incidents.sqlite-wal"))).toBe(false);
     rmSync(other, { recursive: true });
+  });
+
+  it("leaves nothing open when it stops: pages, port, database", async () => {
+    alerts.record(noticed);
+    const { ws, until } = page(alerts.url);
+    await until("hello");
+    expect(existsSync(join(folder, "incidents.sqlite-wal"))).toBe(true);
+    const closed = new Promise((done) => ws.on("close", done));
+    const { url } = alerts;
+    await alerts.stop();
+    await closed;
+    await expect(fetch(url)).rejects.toThrow();
+    expect(existsSync(join(folder, "incidents.sqlite-wal"))).toBe(false);
+    alerts = await open(Number(new URL(url).port));
+    expect(alerts.url).toBe(url);
   });
 });
