@@ -51,45 +51,51 @@ export class Courier {
   async #run(): Promise<void> {
     this.#isBusy = true;
     this.#wake?.unsubscribe();
-    const { store, channel, clock } = this.#options;
-    let soonestMs = Number.POSITIVE_INFINITY;
-    while (this.#again && !this.#isStopped) {
-      this.#again = false;
-      for (const entry of store.due(channel.id, clock.now() * 1000)) {
-        if (this.#isStopped) break;
-        const waitMs = await this.#take(entry);
-        if (waitMs === undefined) this.#again = true;
-        else soonestMs = Math.min(soonestMs, waitMs);
+    const { store, channel, clock, onTrouble } = this.#options;
+    let waitMs: number | undefined;
+    try {
+      while (this.#again && !this.#isStopped) {
+        this.#again = false;
+        for (const entry of store.due(channel.id, clock.now() * 1000)) {
+          if (this.#isStopped) break;
+          if (await this.#take(entry)) this.#again = true;
+        }
       }
+      // Asked of the store: what an earlier round, or an earlier run of the program, put off is waited for too.
+      const dueUs = store.nextDueUs(channel.id);
+      if (dueUs !== undefined) waitMs = Math.max(0, Math.ceil(dueUs / 1000 - clock.now()));
+    } catch (error) {
+      onTrouble(`channel ${channel.id}: the outbox cannot be read or written: ${(error as Error).message}`, false);
+      waitMs = LONGEST_RETRY_MS;
     }
     this.#isBusy = false;
     for (const done of this.#idle.splice(0)) done();
-    if (Number.isFinite(soonestMs) && !this.#isStopped) this.#wake = clock.schedule(() => this.look(), soonestMs);
+    if (waitMs !== undefined && !this.#isStopped) this.#wake = clock.schedule(() => this.look(), waitMs);
   }
 
-  /** @returns milliseconds until the next try; undefined when the entry is done with */
-  async #take(entry: OutboxEntry): Promise<number | undefined> {
+  /** @returns whether the entry is done with, so that the next of its incident is due */
+  async #take(entry: OutboxEntry): Promise<boolean> {
     const { store, channel, clock, deliveryOf, onTrouble, random } = this.#options;
     const delivery = deliveryOf(entry);
     if (!delivery) {
       store.delivered(entry.seq);
-      return undefined;
+      return true;
     }
     try {
       await withTimeout(channel.deliver(delivery));
       store.delivered(entry.seq);
-      return undefined;
+      return true;
     } catch (error) {
       const words = `channel ${channel.id}: ${error instanceof Error ? error.message : String(error)}`;
       if (entry.tries + 1 >= MOST_TRIES) {
         store.setAside(entry.seq, words);
         onTrouble(words, true);
-        return undefined;
+        return true;
       }
       const waitMs = Math.min(LONGEST_RETRY_MS, FIRST_RETRY_MS * 2 ** entry.tries) * (0.5 + random() / 2);
       store.failed(entry.seq, words, Math.round((clock.now() + waitMs) * 1000));
       onTrouble(words, false);
-      return waitMs;
+      return false;
     }
   }
 }

@@ -22,13 +22,17 @@ const SCHEMA = `
   CREATE INDEX outbox_waiting ON outbox (channel_id, incident_id, seq) WHERE state = 'waiting';
 `;
 
+/** Waits in channel ?, and is the oldest of its incident that does. */
+const HEAD_OF_INCIDENT = `o.channel_id = ? AND o.state = 'waiting'
+  AND o.seq = (SELECT MIN(i.seq) FROM outbox i WHERE i.channel_id = o.channel_id AND i.incident_id = o.incident_id AND i.state = 'waiting')`;
+
 export class StoreError extends Error {}
 
 /** @param path  ":memory:" for tests */
 export function openSqliteStore(path: string): IncidentStore {
-  if (path !== ":memory:") mkdirSync(dirname(path), { recursive: true });
   let db: Database.Database;
   try {
+    if (path !== ":memory:") mkdirSync(dirname(path), { recursive: true });
     db = new Database(path);
     db.pragma("journal_mode = WAL");
     // The package's build defaults to NORMAL in WAL mode: a power cut could then lose the last commits.
@@ -84,8 +88,10 @@ class SqliteStore implements IncidentStore {
       ),
       newest: db.prepare<[number], { id: string }>("SELECT id FROM incidents ORDER BY number DESC LIMIT ?"),
       due: db.prepare<[string, number], OutboxRow>(
-        `SELECT o.* FROM outbox o WHERE o.channel_id = ? AND o.state = 'waiting' AND o.not_before_us <= ?
-           AND o.seq = (SELECT MIN(i.seq) FROM outbox i WHERE i.channel_id = o.channel_id AND i.incident_id = o.incident_id AND i.state = 'waiting') ORDER BY o.seq`,
+        `SELECT o.* FROM outbox o WHERE ${HEAD_OF_INCIDENT} AND o.not_before_us <= ? ORDER BY o.seq`,
+      ),
+      nextDue: db.prepare<[string], { us: number | null }>(
+        `SELECT MIN(o.not_before_us) AS us FROM outbox o WHERE ${HEAD_OF_INCIDENT}`,
       ),
       done: db.prepare<[number]>("UPDATE outbox SET state = 'done', tries = tries + 1, error = NULL WHERE seq = ?"),
       failed: db.prepare<[string, number, number]>(
@@ -138,6 +144,9 @@ class SqliteStore implements IncidentStore {
       tries: row.tries,
       notBeforeUs: row.not_before_us,
     }));
+  }
+  nextDueUs(channelId: string): number | undefined {
+    return this.#statements.nextDue.get(channelId)!.us ?? undefined;
   }
   delivered(seq: number): void {
     this.#statements.done.run(seq);

@@ -24,6 +24,8 @@ export interface IncidentStore {
   newest(limit: number): string[];
   /** For one channel: the oldest undelivered entry of each incident that is due. */
   due(channelId: string, nowUs: number): OutboxEntry[];
+  /** When the earliest of those entries is due, µs since 1970 UTC, also in the past; undefined when nothing waits. */
+  nextDueUs(channelId: string): number | undefined;
   delivered(seq: number): void;
   failed(seq: number, error: string, notBeforeUs: number): void;
   setAside(seq: number, error: string): void;

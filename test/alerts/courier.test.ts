@@ -17,7 +17,7 @@ async function until(clock: VirtualTimeScheduler, ms: number): Promise<void> {
   clock.frame = Math.max(clock.frame, ms);
 }
 
-function setup(answer: (delivery: Delivery, count: number) => Promise<void>) {
+function setup(answer: (delivery: Delivery, count: number) => Promise<void>, jitter = 1) {
   const store = openSqliteStore(":memory:");
   const clock = new VirtualTimeScheduler();
   const got: { key: string; atMs: number }[] = [];
@@ -35,7 +35,7 @@ function setup(answer: (delivery: Delivery, count: number) => Promise<void>) {
     clock,
     deliveryOf: (entry) => ({ key: entry.key, atUs: 0 }) as Delivery,
     onTrouble: (words, isSetAside) => troubles.push([words, isSetAside]),
-    random: () => 1,
+    random: () => jitter,
   });
   return { store, clock, got, troubles, courier };
 }
@@ -74,6 +74,67 @@ describe("a courier", () => {
     expect(ofA[4]!.key).toBe(`${a}/3/mail`);
     expect(troubles[0]).toEqual(["channel mail: 500", false]);
     expect(store.counts().waiting).toBe(0);
+  });
+
+  it("keeps the time of a retry when something else comes between", async () => {
+    const { store, clock, got, courier } = setup((_, n) => (n === 1 ? Promise.reject(new Error("500")) : Promise.resolve()));
+    const a = store.open("a", noticed, 1, ["mail"]).incidentId;
+    courier.look();
+    await until(clock, 400);
+    store.open("b", noticed, 1, ["mail"]);
+    courier.look();
+    await until(clock, 60_000);
+    expect(got.filter((g) => g.key.startsWith(a)).map((g) => g.atMs)).toEqual([0, 1000]);
+    expect(store.counts().waiting).toBe(0);
+  });
+
+  it("takes up, after a restart, what the run before it had put off", async () => {
+    const { store, clock, got, courier } = setup(() => Promise.resolve());
+    store.open("a", noticed, 1, ["mail"]);
+    store.failed(store.due("mail", 0)[0]!.seq, "500", 30_000_000);
+    courier.look();
+    await until(clock, 60_000);
+    expect(got.map((g) => g.atMs)).toEqual([30_000]);
+  });
+
+  it("tries again within half a second to a second, however the jitter falls", async () => {
+    const { store, clock, got, courier } = setup((_, n) => (n === 1 ? Promise.reject(new Error("500")) : Promise.resolve()), 0);
+    store.open("a", noticed, 1, ["mail"]);
+    courier.look();
+    await until(clock, 60_000);
+    expect(got.map((g) => g.atMs)).toEqual([0, 500]);
+  });
+
+  it("one that hangs harms no other", async () => {
+    const hanging = setup(() => new Promise(() => {}));
+    const other = setup(() => Promise.resolve());
+    for (const { store, courier } of [hanging, other]) {
+      store.open("a", noticed, 1, ["mail"]);
+      courier.look();
+    }
+    await until(other.clock, 10);
+    expect(other.store.counts().waiting).toBe(0);
+    expect(hanging.store.counts().waiting).toBe(1);
+  });
+
+  it("says in words that the store fails, stays up, and goes on when the store does", async () => {
+    const { store, clock, got, troubles, courier } = setup(() => Promise.resolve());
+    store.open("a", noticed, 1, ["mail"]);
+    const broken = vi.spyOn(store, "delivered").mockImplementation(() => {
+      throw new Error("disk I/O error");
+    });
+    const alsoBroken = vi.spyOn(store, "failed").mockImplementation(() => {
+      throw new Error("disk I/O error");
+    });
+    courier.look();
+    await until(clock, 100);
+    expect(troubles).toEqual([["channel mail: the outbox cannot be read or written: disk I/O error", false]]);
+    broken.mockRestore();
+    alsoBroken.mockRestore();
+    courier.look();
+    await until(clock, 60_000);
+    expect(store.counts().waiting).toBe(0);
+    expect(new Set(got.map((g) => g.key)).size).toBe(1);
   });
 
   it("sets aside what is refused for good, and says so", async () => {

@@ -66,6 +66,31 @@ describe("SQLite", () => {
     }
   });
 
+  it("refuses a path that cannot be used, in words", () => {
+    const file = fresh();
+    writeFileSync(file, "a file where a folder is needed");
+    expect(() => openSqliteStore(join(file, "deeper", "incidents.sqlite"))).toThrow(StoreError);
+    expect(() => openSqliteStore(join(file, "deeper", "incidents.sqlite"))).toThrow(/another folder with --data/);
+    expect(() => openSqliteStore(folder)).toThrow(StoreError);
+  });
+
+  it("gives the same state when the file is opened again: facts, order, tries, what was set aside", () => {
+    const path = fresh();
+    const store = openSqliteStore(path);
+    const { incidentId } = store.open("a", noticed, 1, ["mail", "chat"]);
+    store.append(incidentId, located(), 2, ["mail", "chat"]);
+    store.failed(store.due("mail", 0)[0]!.seq, "refused", 700);
+    store.setAside(store.due("chat", 0)[0]!.seq, "gone");
+    const all = (s: typeof store) => [s.facts(incidentId), s.due("mail", 699), s.due("mail", 700), s.due("chat", 0), s.counts()];
+    const before = all(store);
+    store.close();
+    expect(() => store.append(incidentId, located(), 3, ["mail"])).toThrow(/not open/);
+    const again = openSqliteStore(path);
+    expect(all(again)).toEqual(before);
+    expect(again.counts()).toEqual({ waiting: 3, setAside: 1 });
+    again.close();
+  });
+
   it("refuses a file of a newer version, and one that is no database, in words", () => {
     const newer = fresh();
     openSqliteStore(newer).close();

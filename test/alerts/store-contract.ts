@@ -56,6 +56,11 @@ export function storeContract(name: string, make: () => IncidentStore): void {
       const [entry] = s.due("mail", 0);
       s.failed(entry!.seq, "refused", 500);
       expect(s.due("mail", 499)).toEqual([]);
+      expect(s.nextDueUs("mail")).toBe(500);
+      expect(s.nextDueUs("chat")).toBeUndefined();
+      s.open("b", noticed, 2, ["mail"]);
+      expect(s.nextDueUs("mail")).toBe(0);
+      s.delivered(s.due("mail", 0)[0]!.seq);
       expect(s.due("mail", 500)).toMatchObject([{ key: entry!.key, seq: entry!.seq, tries: 1 }]);
     });
 
