@@ -22,8 +22,8 @@ export interface IncidentState {
   readonly acknowledged: { readonly by: string; readonly atUs: number } | null;
   /** The newest fact is the first place that was told. */
   readonly isFirstLocation: boolean;
-  /** Stretch that was told at the stage before, when the place now lies outside it. */
-  readonly corrects: { readonly km: number | null; readonly stretchKm: readonly [number, number] | null } | null;
+  /** What was told at the stage before, when the place now lies outside its stretch or on another line. */
+  readonly corrects: Pick<Location, "lineId" | "km" | "stretchKm"> | null;
 }
 
 /** @returns undefined for no facts, or when the first is not the onset */
@@ -68,7 +68,7 @@ export function withFact(state: IncidentState | undefined, fact: Fact): Incident
         outside: null,
         isFirstLocation: state.location === null,
         corrects: isCorrection(state.location, body.location)
-          ? { km: state.location!.km, stretchKm: state.location!.stretchKm }
+          ? { lineId: state.location!.lineId, km: state.location!.km, stretchKm: state.location!.stretchKm }
           : null,
       };
     case "cleared":

@@ -1,5 +1,6 @@
 /** What a person is told at one fact of an incident: lines of plain text, the most important first. */
 import type { Network } from "../../config/index.ts";
+import type { Location } from "../../pipeline/types.ts";
 import type { FactBody } from "../incident/facts.ts";
 import type { IncidentState } from "../incident/fold.ts";
 import { CAUTION } from "./caution.ts";
@@ -23,10 +24,7 @@ export function messageOf(body: FactBody, state: IncidentState, network: Network
     case "noticed":
       return { head: "Noticed", lines: [`${firstLine(state, network)}, ${id}`], isAlarm: false };
     case "located": {
-      const correction =
-        state.corrects && body.location.km !== null && state.corrects.km !== null
-          ? `CORRECTION: was ${kmText(state.corrects.km)} km, now ${kmText(body.location.km)} km from ${line ? name(line.terminals[0]!.stationId) : "the first station"}`
-          : undefined;
+      const correction = state.corrects ? correctionWords(state.corrects, body.location, network) : undefined;
       const far =
         line && body.location.km !== null
           ? [`${kmText(line.lengthKm - body.location.km)} km from ${name(line.terminals.at(-1)!.stationId)}`]
@@ -73,4 +71,19 @@ export function messageOf(body: FactBody, state: IncidentState, network: Network
     case "ended":
       return undefined;
   }
+}
+
+type Told = Pick<Location, "lineId" | "km">;
+
+/** Both places. Two distances from one station can be compared; on two lines, each is named with its station and line. */
+function correctionWords(was: Told, now: Told, network: Network): string {
+  const station = (place: Told) => {
+    const first = network.lines.find((l) => l.id === place.lineId)?.terminals[0]?.stationId;
+    return network.stations.find((s) => s.id === first)?.name ?? "the first station";
+  };
+  if (was.lineId === now.lineId && was.km !== null && now.km !== null)
+    return `CORRECTION: was ${kmText(was.km)} km, now ${kmText(now.km)} km from ${station(now)}`;
+  const whole = (place: Told) =>
+    `${place.km === null ? "place unknown" : `${kmText(place.km)} km from ${station(place)}`} on ${network.lines.find((l) => l.id === place.lineId)?.name ?? place.lineId}`;
+  return `CORRECTION: was ${whole(was)}, now ${whole(now)}`;
 }

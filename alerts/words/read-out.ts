@@ -4,7 +4,7 @@
  */
 import type { Network } from "../../config/index.ts";
 import type { IncidentState } from "../incident/fold.ts";
-import { kmText } from "./first-line.ts";
+import { isNoFault, kmText } from "./first-line.ts";
 import { phaseWords } from "./phases.ts";
 
 const DIGITS = ["zero", "one", "two", "three", "four", "five", "six", "seven", "eight", "nine"];
@@ -19,10 +19,10 @@ export function readOut(state: IncidentState, network: Network): string {
   const id = `incident ${[...state.incident].join(" ")}`;
   const { location } = state;
   const line = network.lines.find((l) => l.id === (location?.lineId ?? state.lineIds[0]));
-  if (state.outside !== null) return `Outside our lines, ${id}.`;
-  if (!line || !location) return `${line?.name ?? "Unknown line"}, disturbance noticed, place not yet known, ${id}.`;
+  const name = line?.name.replace(/ (\d+)$/, (_, n: string) => ` ${spokenNumber(n)}`) ?? "Unknown line";
+  if (state.outside !== null) return isNoFault(state) ? `${name}, not a fault, ${id}.` : `Outside our lines, ${id}.`;
+  if (!line || !location) return `${name}, disturbance noticed, place not yet known, ${id}.`;
   const station = network.stations.find((s) => s.id === line.terminals[0]!.stationId)!.name;
-  const name = line.name.replace(/ (\d+)$/, (_, n: string) => ` ${spokenNumber(n)}`);
   const phases = phaseWords(location.phases, network);
   if (location.km === null) return `${name}, ${phases}, place unknown, ${id}.`;
   const place = `${spokenNumber(kmText(location.km))} kilometres from ${station}`;

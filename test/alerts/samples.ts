@@ -1,6 +1,6 @@
 /** A fault on the Marrow Coast as the pipeline tells it, for the tests of what people are told. */
 import { demoNetworkPath, loadNetwork } from "../../config/index.ts";
-import type { DisturbanceEvent, Location } from "../../pipeline/types.ts";
+import type { DisturbanceEvent, Location, OnsetNoticed } from "../../pipeline/types.ts";
 
 export const network = loadNetwork(demoNetworkPath());
 /** 2026-03-04 02:14:07.5 UTC */
@@ -32,7 +32,7 @@ export const location = (over: Partial<Location> = {}): Location => ({
 });
 
 const base = { disturbanceId: "d1", dataTimeUs: ONSET_US + 100_000 };
-export const noticed: DisturbanceEvent = {
+export const noticed: OnsetNoticed = {
   ...base,
   kind: "noticed",
   onsetUs: ONSET_US,

@@ -90,6 +90,20 @@ describe("messages", () => {
     expect(message.lines[0]).toBe("CORRECTION: was 41.3 km, now 67.0 km from Brack");
     expect(told(noticed, located(), located({ km: 42 }, "refined"))).toMatchObject({ head: "Located", isAlarm: false });
   });
+  it("of a fault that is on another line: a correction that names both lines, not two distances that cannot be compared", () => {
+    const elsewhere = located({ lineId: "tolva-quenby-1", km: 12, pieces: [], stretchKm: [11, 13] }, "refined");
+    const message = told(noticed, located(), elsewhere);
+    expect(message).toMatchObject({ head: "Correction", isAlarm: true });
+    expect(message.lines[0]).toBe("CORRECTION: was 41.3 km from Brack on Brack-Tolva, now 12.0 km from Tolva on Tolva-Quenby 1");
+    const unknown = located(
+      { lineId: "tolva-quenby-1", km: null, pieces: [], stretchKm: null, flag: "direction only" },
+      "refined",
+    );
+    expect(told(noticed, located(), unknown)).toMatchObject({ head: "Correction", isAlarm: true });
+    expect(told(noticed, located(), unknown).lines[0]).toBe(
+      "CORRECTION: was 41.3 km from Brack on Brack-Tolva, now place unknown on Tolva-Quenby 1",
+    );
+  });
   it("of a fault that turned out to be none: a correction", () => {
     expect(told(noticed, located(), outside("not a fault: line switched in"))).toMatchObject({
       head: "Correction",
@@ -115,6 +129,24 @@ describe("the sentence to read out", () => {
       expect(sentence.replace(/incident.*$/, "")).not.toMatch(/\d/);
     }
   });
+  it("does so on every line, at every stage", () => {
+    for (const { id, lengthKm } of network.lines)
+      for (const phases of faultTypes)
+        for (const km of [0, lengthKm / 3, lengthKm, null]) {
+          const place = { lineId: id, phases, km, spanTowers: { from: "1118", to: "1119" }, flag: "direction only" as const };
+          for (const state of [stateAfter({ ...noticed, lineIds: [id] }), stateAfter(noticed, located(place))]) {
+            const sentence = readOut(state, network);
+            expect(sentence.split(/\s+/).length, sentence).toBeLessThanOrEqual(25);
+            expect(sentence.replace(/incident.*$/, "")).not.toMatch(/\d|\bkm\b|\bkV\b/);
+          }
+        }
+  });
+  it("does not say of what is no fault that it lies outside", () => {
+    expect(readOut(stateAfter(noticed, outside("not a fault: line switched in")), network)).toBe(
+      "Brack-Tolva, not a fault, incident K 7 M 3.",
+    );
+    expect(readOut(stateAfter(noticed, outside("behind Brack")), network)).toBe("Outside our lines, incident K 7 M 3.");
+  });
 });
 
 it("times are UTC first, then the control room's with its offset, also across midnight and half hours", () => {
@@ -130,6 +162,7 @@ describe("words that are not ours to say", () => {
       outside("behind Brack"),
       outside("not a fault: line switched in"),
       located({ km: 67, stretchKm: [66, 68] }),
+      located({ lineId: "tolva-quenby-1", km: 12, stretchKm: [11, 13] }),
     ].flatMap((body) => {
       const state = stateAfter(noticed, located(), body);
       return [firstLine(state, network), readOut(state, network), ...(messageOf(body, state, network)?.lines ?? [])];
