@@ -1,3 +1,5 @@
+import { mkdirSync } from "node:fs";
+
 export const recordingErrorCodes = [
   "unreadable",
   "unwritable",
@@ -15,5 +17,14 @@ export class RecordingError extends Error {
     super(words, cause === undefined ? undefined : { cause });
     this.name = "RecordingError";
     this.code = code;
+  }
+}
+
+/** @throws RecordingError when the folder for recordings is not there and cannot be made */
+export function makeRecordingFolder(folder: string): void {
+  try {
+    mkdirSync(folder, { recursive: true });
+  } catch (cause) {
+    throw new RecordingError("unwritable", `${folder}: cannot be made: ${(cause as Error).message}`, cause);
   }
 }

@@ -1,7 +1,7 @@
 /** A raw recording made by a program that waits for it: frames back to back as they go on the wire, the configuration frame first. */
-import { createWriteStream, mkdirSync, type WriteStream } from "node:fs";
+import { createWriteStream, type WriteStream } from "node:fs";
 import { join } from "node:path";
-import { RecordingError } from "./recording-error.ts";
+import { makeRecordingFolder, RecordingError } from "./recording-error.ts";
 
 export const recordingName = (feedId: string): string => `${feedId}.frames`;
 
@@ -16,11 +16,7 @@ export class RecordingWriter {
    */
   constructor(folder: string, feedId: string) {
     this.#path = join(folder, recordingName(feedId));
-    try {
-      mkdirSync(folder, { recursive: true });
-    } catch (cause) {
-      throw new RecordingError("unwritable", `${folder}: cannot be made: ${(cause as Error).message}`, cause);
-    }
+    makeRecordingFolder(folder);
     this.#stream = createWriteStream(this.#path);
     this.#stream.on("error", (error) => {
       this.#failure = error;

@@ -21,6 +21,12 @@ export interface TerminalCapture {
   readonly isSynchronised: boolean;
 }
 
+/** Size of a phase current (0..2 for A B C) in the newest frame [A]. */
+export function newestCurrentAmp({ timesS, phasors }: TerminalCapture, phase: number): number {
+  const at = (timesS.length - 1) * NUMBERS_PER_ROW + 6 + 2 * phase;
+  return Math.hypot(phasors[at]!, phasors[at + 1]!);
+}
+
 /**
  * @param fromUs, toUs  span of stamps wanted
  * @param onsetUs       frames before this show the undisturbed frequency

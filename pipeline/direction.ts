@@ -25,7 +25,7 @@ const OPEN_AMP = 5;
 const ALIVE_SHARE = 0.7;
 
 /** 1: clearly in front of this end, −1: clearly behind. */
-export function forwardness(end: EndPhasors): number {
+function forwardness(end: EndPhasors): number {
   let power = 0;
   let size = 0;
   const v = toSequence([delta(end, 0), delta(end, 1), delta(end, 2)]);

@@ -5,7 +5,7 @@
  */
 import type { Line, Network, Terminal } from "../config/index.ts";
 import type { FrameBlock, FrameRing } from "../ingest/types.ts";
-import { captureTerminal } from "./capture.ts";
+import { captureTerminal, newestCurrentAmp } from "./capture.ts";
 import { type CapturedEnd, type Finding, locate } from "./locate.ts";
 import { type MeasuringWindow, referenceWindow } from "./measuring-window.ts";
 import { OnsetDetector, type Trigger } from "./onset-detector.ts";
@@ -254,7 +254,7 @@ export class DisturbanceTracker {
     const terminals = lines.slice(0, 1).flatMap((line) => this.#terminalsOf(line));
     const ends = terminals.flatMap((w) => this.#endOf(open, w, this.#newestUs) ?? []);
     const resting = ends.flatMap((end) => {
-      const since = progressOf(end.capture, end.disturbedS).restsSince;
+      const since = end.progress.restsSince;
       return since === undefined ? [] : [end.capture.timesS[since]!];
     });
     const kind = resting.length === 0 ? "moving" : resting.length === terminals.length ? "all" : "some";
@@ -278,13 +278,14 @@ export class DisturbanceTracker {
     const disturbedUs = open.triggers.get(watched.terminal.id)?.timeUs ?? open.detectedUs;
     const capture = captureTerminal(watched.view, watched.nominalHz, epochUs, disturbedUs - BEFORE_US, untilUs, disturbedUs);
     if (capture.timesS.length < 6) return undefined;
-    return { capture, window: watched.window, disturbedS: (disturbedUs - epochUs) / 1e6 };
+    const disturbedS = (disturbedUs - epochUs) / 1e6;
+    return { capture, window: watched.window, disturbedS, progress: progressOf(capture, disturbedS) };
   }
 
   #disturbanceOf(open: Open, line: Line, stage: LocateStage, untilUs: number) {
     const ends = this.#terminalsOf(line).flatMap((w) => this.#endOf(open, w, untilUs) ?? []);
     // At the deadline an end that has not come to rest (or has stopped sending) is left out, if another has.
-    const rested = ends.filter((e) => progressOf(e.capture, e.disturbedS).restsSince !== undefined);
+    const rested = ends.filter((e) => e.progress.restsSince !== undefined);
     const stationName = (id: string) => this.#network.stations.find((s) => s.id === id)?.name ?? id;
     return { line, ends: stage === "settled" && rested.length > 0 ? rested : ends, stationName, stage };
   }
@@ -294,12 +295,8 @@ export class DisturbanceTracker {
     return this.#terminalsOf(line).flatMap((w) => {
       const end = this.#endOf(open, w, this.#newestUs);
       if (!end) return [];
-      const { peakAmp } = progressOf(end.capture, end.disturbedS);
-      const last = (end.capture.timesS.length - 1) * 12;
-      const largest = Math.max(
-        ...[6, 8, 10].map((c) => Math.hypot(end.capture.phasors[last + c]!, end.capture.phasors[last + c + 1]!)),
-      );
-      return largest < NO_CURRENT_SHARE * peakAmp ? [w.terminal.stationId] : [];
+      const largest = Math.max(...[0, 1, 2].map((phase) => newestCurrentAmp(end.capture, phase)));
+      return largest < NO_CURRENT_SHARE * end.progress.peakAmp ? [w.terminal.stationId] : [];
     });
   }
 }

@@ -10,7 +10,7 @@ const SPREAD = 0.04;
 /** Residual of the unmixing fit (relative) under which nearly all fits are good, and over which the fit says that its model is wrong. Measured on the
  * simulator's campaigns. */
 const GOOD_RESIDUAL = 0.005;
-export const POOR_RESIDUAL = 0.02;
+const POOR_RESIDUAL = 0.02;
 
 export interface FlagInputs {
   readonly combined: Combined;

@@ -1,6 +1,6 @@
 /** Locating as a pure function: the captured frames of a line's measured ends in, the place with its stretch, flag and reasons out. */
 import type { Line } from "../config/index.ts";
-import type { TerminalCapture } from "./capture.ts";
+import { newestCurrentAmp, type TerminalCapture } from "./capture.ts";
 import { type Combined, combine, towerSpan } from "./combine.ts";
 import { abs } from "./complex.ts";
 import { judge } from "./direction.ts";
@@ -11,8 +11,7 @@ import { mixedFrame, UNMIXED, unmixedPhasors, wholeWindowPhasors } from "./frame
 import type { MeasuringWindow } from "./measuring-window.ts";
 import { selectPhases } from "./phase-selection.ts";
 import { roughTiming } from "./rough-timing.ts";
-import { type Progress, progressOf } from "./steadiness.ts";
-import { NUMBERS_PER_ROW } from "./terminal-view.ts";
+import type { Progress } from "./steadiness.ts";
 import type { FaultType, LocateStage, Location } from "./types.ts";
 import { fitTiming, PROFILE, prepareEnd, type Timing } from "./unmix.ts";
 
@@ -21,6 +20,7 @@ export interface CapturedEnd {
   readonly window: MeasuringWindow;
   /** Stamp of the first frame that was disturbed, seconds from the epoch. */
   readonly disturbedS: number;
+  readonly progress: Progress;
 }
 
 export interface LineDisturbance {
@@ -35,7 +35,8 @@ export type Finding =
   | {
       readonly kind: "located";
       readonly location: Location;
-      readonly onsetS: number /** Infinity while it lasts */;
+      readonly onsetS: number;
+      /** Infinity while it lasts. */
       readonly clearingS: number;
     }
   | { readonly kind: "elsewhere"; readonly reason: string; readonly onsetS: number }
@@ -45,6 +46,7 @@ export type Finding =
 const PLACE_ERROR_OF_RESIDUAL = 0.15;
 /** Floor of what no draw covers (formulas, sampling), fraction of the line. */
 const PLACE_ERROR_FLOOR = 0.0003;
+/** See `unmixingError`. */
 const UNMIXING_ERROR = 0.0002;
 /** Error of superimposed positive sequence on a frame whose window already reaches past the clearing, fraction of the line. */
 const MIXED_POSITIVE_ERROR = 0.008;
@@ -62,10 +64,8 @@ interface Phasors {
 
 /** Never throws on data: what cannot be located yet is "wait". */
 export function locate(disturbance: LineDisturbance): Finding {
-  const progress = disturbance.ends.map((end) => progressOf(end.capture, end.disturbedS));
-  const phasors = progress.every((p) => p.restsSince !== undefined)
-    ? settledPhasors(disturbance.ends)
-    : earlyPhasors(disturbance.ends, progress);
+  const isAtRest = disturbance.ends.every((end) => end.progress.restsSince !== undefined);
+  const phasors = isAtRest ? settledPhasors(disturbance.ends) : earlyPhasors(disturbance.ends);
   if (!phasors) return { kind: "wait" };
   const { ends, timing } = phasors;
   const verdict = judge(ends, disturbance.line.nominalKv, phasors.isMixed);
@@ -102,11 +102,9 @@ const OPENED_AMP = 5;
 function hasOpened(captured: readonly CapturedEnd[], ends: readonly EndPhasors[], type: FaultType): boolean {
   return ends.some((end) => {
     const capture = captured.find((c) => c.capture.terminal.id === end.terminal.id)!.capture;
-    const last = (capture.timesS.length - 1) * NUMBERS_PER_ROW;
     return phasesOf(type).every((p) => {
-      const c = 3 + p;
-      const now = Math.hypot(capture.phasors[last + 2 * c]!, capture.phasors[last + 2 * c + 1]!);
-      const inFault = abs(end.fault[c]!);
+      const now = newestCurrentAmp(capture, p);
+      const inFault = abs(end.fault[3 + p]!);
       return now < Math.max(OPENED_AMP, OPENED_SHARE * inFault) && inFault > 4 * OPENED_AMP;
     });
   });
@@ -142,10 +140,10 @@ const ALIKE = 0.05;
  * Before the clearing is known. A unit with a short window shows a plateau: its frames lie wholly in the fault (the first disturbed stamp can lie half a
  * window before the onset, so two halves after it is the earliest). Units with the same longer window are compared on the deepest common frame.
  */
-function earlyPhasors(ends: readonly CapturedEnd[], progress: readonly Progress[]): Phasors | undefined {
-  const plateaus = ends.flatMap((end, e) => {
+function earlyPhasors(ends: readonly CapturedEnd[]): Phasors | undefined {
+  const plateaus = ends.flatMap((end) => {
     const { capture, window } = end;
-    const { excursionAmp, changeAmp, peakAmp } = progress[e]!;
+    const { excursionAmp, changeAmp, peakAmp } = end.progress;
     const n = [...capture.timesS.keys()].find(
       (k) =>
         capture.timesS[k]! >= end.disturbedS + 2 * window.halfS &&
@@ -164,8 +162,8 @@ function earlyPhasors(ends: readonly CapturedEnd[], progress: readonly Progress[
   }
   const [a, b] = ends;
   if (!a || !b || a.window.origin !== b.window.origin) return undefined;
-  const deepest = (end: CapturedEnd, p: Progress) => end.capture.timesS[p.excursionAmp.indexOf(p.peakAmp)]!;
-  const at = Math.min(deepest(a, progress[0]!), deepest(b, progress[1]!));
+  const deepest = ({ capture, progress }: CapturedEnd) => capture.timesS[progress.excursionAmp.indexOf(progress.peakAmp)]!;
+  const at = Math.min(deepest(a), deepest(b));
   if (at < Math.min(a.disturbedS, b.disturbedS) + a.window.halfS / 2) return undefined;
   const phasors = [mixedFrame(a.capture, a.window, a.disturbedS, at), mixedFrame(b.capture, b.window, b.disturbedS, at)].filter(
     (x) => x !== undefined,
@@ -189,13 +187,8 @@ function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Pha
   const alone = Math.max(...ends.map((end) => unmixingError(x, end, timing)));
   const extraSdOf = (used: readonly number[]) => (used.length > 1 ? shared : Math.hypot(shared, alone));
   const stationOf = (e: number) => ends[e]!.terminal.stationId;
-  const combined = combine(
-    line,
-    evidence,
-    extraSdOf,
-    (used) => [...new Set(used.map((e) => ends[e]!.frames))].join("; "),
-    (used) => used.map(stationOf),
-  );
+  const framesOf = (used: readonly number[]) => [...new Set(used.map((e) => ends[e]!.frames))].join("; ");
+  const combined = combine(line, evidence, extraSdOf, framesOf, (used) => used.map(stationOf));
   if (!combined) return undefined;
   const name = (e: EndPhasors) => x.stationName(e.terminal.stationId);
   const { flag, reasons } = flagOf({
@@ -205,7 +198,7 @@ function locationOf(x: LineDisturbance, { ends, timing, residual, isMixed }: Pha
     measuredAt: ends.map(name),
     unmeasured: line.terminals.filter((t) => !ends.some((e) => e.terminal.id === t.id)).map((t) => x.stationName(t.stationId)),
     residual,
-    frames: [...new Set(ends.map((e) => e.frames))].join("; "),
+    frames: framesOf([...ends.keys()]),
     phaseMarginDegrees: marginDegrees,
     missingFrames: x.ends.reduce((s, e) => s + e.capture.missingFrames, 0),
     unsynchronisedAt: x.ends.filter((e) => !e.capture.isSynchronised).map((e) => x.stationName(e.capture.terminal.stationId)),

@@ -27,7 +27,7 @@ const M_CLASS: Readonly<Record<50 | 60, Readonly<Record<number, readonly [number
 const P_CLASS_ORDER = 30;
 const SAMPLES_PER_CYCLE = 16;
 
-export function makeWindow(taps: Float64Array, stepS: number, origin: string): MeasuringWindow {
+function makeWindow(taps: Float64Array, stepS: number, origin: string): MeasuringWindow {
   const sum = taps.reduce((s, h) => s + h, 0);
   return { taps: taps.map((h) => h / sum), stepS, halfS: (taps.length * stepS) / 2, origin };
 }

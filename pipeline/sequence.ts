@@ -14,8 +14,8 @@ export interface Sequence {
 
 const SIN_120 = Math.sqrt(3) / 2;
 /** a = 1∠120° */
-export const A = complex(-0.5, SIN_120);
-export const A2 = complex(-0.5, -SIN_120);
+const A = complex(-0.5, SIN_120);
+const A2 = complex(-0.5, -SIN_120);
 
 export function toSequence([a, b, c]: Abc): Sequence {
   return {

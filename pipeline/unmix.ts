@@ -52,8 +52,6 @@ export interface States {
   /** VA VB VC IA IB IC, at the epoch's phase reference. */
   readonly pre: readonly Complex[];
   readonly fault: readonly Complex[];
-  /** Undefined while the fault lasts. */
-  readonly post: readonly Complex[] | undefined;
   /** Standard deviation of re (as of im) of each fault phasor, from the fit's own residual [V, A]. */
   readonly faultSd: readonly number[];
   readonly preSd: readonly number[];
@@ -150,7 +148,6 @@ const makeWorkspace = (): Workspace => ({ base: new Float64Array(0), a: new Floa
 interface Shape {
   readonly rows: number;
   readonly columns: number;
-  readonly states: number;
 }
 
 /** Fills `work.base` with what each frame shows of each column at unit size, then the ridge rows. */
@@ -213,7 +210,7 @@ function fillBase(end: PreparedEnd, timing: Timing, model: ClearingModel, work: 
     row++;
   }
   base[row * columns + OFFSET] = OFFSET_RIDGE * model.ridge;
-  return { rows, columns, states };
+  return { rows, columns };
 }
 
 /** Brings one group's system into `work.a`, `work.b` and reduces it; returns its summed squared residual (channel scales), ridge rows included. */
@@ -280,7 +277,6 @@ export function statesAt(end: PreparedEnd, timing: Timing, model: ClearingModel)
     return {
       pre: phasors(PRE),
       fault: phasors(FAULT),
-      post: shape.states > 2 ? phasors(shape.columns - 3) : undefined,
       preSd: sd(PRE),
       faultSd: sd(FAULT),
     };
@@ -289,7 +285,6 @@ export function statesAt(end: PreparedEnd, timing: Timing, model: ClearingModel)
   return {
     pre: [...v.pre, ...i.pre],
     fault: [...v.fault, ...i.fault],
-    post: v.post && i.post ? [...v.post, ...i.post] : undefined,
     preSd: [...v.preSd, ...i.preSd],
     faultSd: [...v.faultSd, ...i.faultSd],
     residual: Math.sqrt(total / (end.frames * CHANNELS)),

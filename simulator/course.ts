@@ -19,7 +19,7 @@ export interface Piece {
 }
 
 /** Instrument transformers' errors of one terminal: re and im of each channel's gain. */
-export function drawGains(terminal: Terminal, size: number, random: Random): Float64Array {
+function drawGains(terminal: Terminal, size: number, random: Random): Float64Array {
   const gains = new Float64Array(12);
   for (let c = 0; c < 6; c++) {
     const limit = c < 3 ? terminal.measured!.voltageTransformer : terminal.measured!.currentTransformer;

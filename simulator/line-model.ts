@@ -68,7 +68,7 @@ function emf(line: Line, source: Source): { re: number; im: number }[] {
 }
 
 /** Nodal conductance of a shunt fault: arms to a common point, which goes to ground through `ohm`; or `ohm` between two phases. */
-export function faultConductance(type: string, ohm: number): number[][] {
+function faultConductance(type: string, ohm: number): number[][] {
   const g = [0, 1, 2].map(() => [0, 0, 0]);
   const on = [..."ABC"].flatMap((p, k) => (type.includes(p) ? [k] : []));
   const arm =

@@ -10,8 +10,7 @@ import { phaseWords } from "./phases.ts";
 const DIGITS = ["zero", "one", "two", "three", "four", "five", "six", "seven", "eight", "nine"];
 
 /** "41.3" -> "four one decimal three" */
-export const spokenNumber = (text: string): string =>
-  [...text].map((c) => (c === "." ? "decimal" : (DIGITS[Number(c)] ?? c))).join(" ");
+const spokenNumber = (text: string): string => [...text].map((c) => (c === "." ? "decimal" : (DIGITS[Number(c)] ?? c))).join(" ");
 
 const MOST_WORDS = 25;
 

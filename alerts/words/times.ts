@@ -3,7 +3,7 @@
 const pad = (n: number, width = 2) => String(n).padStart(width, "0");
 
 /** "02:14:07 UTC" */
-export function utcTime(us: number): string {
+function utcTime(us: number): string {
   const d = new Date(us / 1000);
   return `${pad(d.getUTCHours())}:${pad(d.getUTCMinutes())}:${pad(d.getUTCSeconds())} UTC`;
 }
@@ -19,7 +19,7 @@ export function offsetMinutes(us: number, timeZone: string): number {
 }
 
 /** "03:14 +01:00" */
-export function localTime(us: number, timeZone: string): string {
+function localTime(us: number, timeZone: string): string {
   const offset = offsetMinutes(us, timeZone);
   const d = new Date(us / 1000 + offset * 60_000);
   const size = Math.abs(offset);

@@ -3,7 +3,7 @@
  * Source: IEEE C37.118.2-2011, clause 6.4, tables 10 and 11 (from memory); layout checked against an independent dissector in test/published.
  */
 import { timeFields } from "./common-header.ts";
-import { BadConfiguration, formatBits, NOMINAL_50, rateOf, rateWordOf } from "./config-frame.ts";
+import { BadConfiguration, formatOf, formatWordOf, nominalHzOf, nominalWordOf, rateOf, rateWordOf } from "./config-frame.ts";
 import { ContentReader, ContentWriter } from "./content.ts";
 import { BODY_AT, finishFrame } from "./frame-writer.ts";
 import {
@@ -92,7 +92,7 @@ function readUnit(c: ContentReader): UnitConfig {
   const name = c.name("STN");
   const idCode = c.u16("IDCODE");
   const globalId = c.hex(16, "G_PMU_ID");
-  const format = formatBits.read(c.u16("FORMAT"));
+  const format = formatOf(c.u16("FORMAT"));
   const counts = [c.u16("PHNMR"), c.u16("ANNMR"), c.u16("DGNMR")] as const;
   const [phasorCount, analogCount, digitalCount] = counts;
   // Least sizes, so that a broken count takes no memory: a name of no letters and the scale of each.
@@ -138,14 +138,11 @@ function readUnit(c: ContentReader): UnitConfig {
   return {
     name,
     idCode,
-    phasorsArePolar: format.polar === 1,
-    phasorsAreFloat: format.phasorFloat === 1,
-    analogsAreFloat: format.analogFloat === 1,
-    frequencyIsFloat: format.frequencyFloat === 1,
+    ...format,
     phasors,
     analogs,
     digitals,
-    nominalHz: c.u16("FNOM") & NOMINAL_50 ? 50 : 60,
+    nominalHz: nominalHzOf(c.u16("FNOM")),
     configurationCount: c.u16("CFGCNT"),
     site,
   };
@@ -176,14 +173,7 @@ function writeUnit(w: ContentWriter, unit: UnitConfig): void {
   w.name(unit.name);
   w.u16(unit.idCode);
   w.hex(site.globalId);
-  w.u16(
-    formatBits.write({
-      polar: Number(unit.phasorsArePolar),
-      phasorFloat: Number(unit.phasorsAreFloat),
-      analogFloat: Number(unit.analogsAreFloat),
-      frequencyFloat: Number(unit.frequencyIsFloat),
-    }),
-  );
+  w.u16(formatWordOf(unit));
   for (const channels of [unit.phasors, unit.analogs, unit.digitals]) w.u16(channels.length);
   for (const channel of [...unit.phasors, ...unit.analogs]) w.name(channel.name);
   for (const digital of unit.digitals) for (let bit = 0; bit < 16; bit++) w.name(digital.names[bit] ?? "");
@@ -208,6 +198,6 @@ function writeUnit(w: ContentWriter, unit: UnitConfig): void {
   w.u8((site.serviceClass === "unknown" ? " " : site.serviceClass).charCodeAt(0));
   w.u32(site.windowUs >>> 0);
   w.u32(site.groupDelayUs >>> 0);
-  w.u16(unit.nominalHz === 50 ? NOMINAL_50 : 0);
+  w.u16(nominalWordOf(unit.nominalHz));
   w.u16(unit.configurationCount);
 }

@@ -16,9 +16,33 @@ const unitStart = fields([
   ["analogCount", u16],
   ["digitalCount", u16],
 ]);
-export const formatBits = bits({ polar: [0, 1], phasorFloat: [1, 1], analogFloat: [2, 1], frequencyFloat: [3, 1] });
+const formatBits = bits({ polar: [0, 1], phasorFloat: [1, 1], analogFloat: [2, 1], frequencyFloat: [3, 1] });
+
+type UnitFormat = Pick<UnitConfig, "phasorsArePolar" | "phasorsAreFloat" | "analogsAreFloat" | "frequencyIsFloat">;
+
+/** FORMAT of a unit, the same word in configuration frames 1, 2 and 3. */
+export function formatOf(word: number): UnitFormat {
+  const format = formatBits.read(word);
+  return {
+    phasorsArePolar: format.polar === 1,
+    phasorsAreFloat: format.phasorFloat === 1,
+    analogsAreFloat: format.analogFloat === 1,
+    frequencyIsFloat: format.frequencyFloat === 1,
+  };
+}
+
+export const formatWordOf = (unit: UnitFormat): number =>
+  formatBits.write({
+    polar: Number(unit.phasorsArePolar),
+    phasorFloat: Number(unit.phasorsAreFloat),
+    analogFloat: Number(unit.analogsAreFloat),
+    frequencyFloat: Number(unit.frequencyIsFloat),
+  });
+
 /** FNOM bit 0: set for 50 Hz. */
-export const NOMINAL_50 = 1;
+const NOMINAL_50 = 1;
+export const nominalHzOf = (word: number): 50 | 60 => (word & NOMINAL_50 ? 50 : 60);
+export const nominalWordOf = (nominalHz: 50 | 60): number => (nominalHz === 50 ? NOMINAL_50 : 0);
 /** PHUNIT counts 10⁻⁵ volt or ampere per bit. */
 const PER_BIT = 1e-5;
 const analogKinds = ["instantaneous", "rms", "peak"] as const;
@@ -79,18 +103,14 @@ export function decodeConfig(frame: Uint8Array, at = 0, size = frame.length): St
       const masks = word();
       return { names, normal: masks >>> 16, valid: masks & 0xffff };
     });
-    const format = formatBits.read(start.format);
     units.push({
       name,
       idCode: start.idCode,
-      phasorsArePolar: format.polar === 1,
-      phasorsAreFloat: format.phasorFloat === 1,
-      analogsAreFloat: format.analogFloat === 1,
-      frequencyIsFloat: format.frequencyFloat === 1,
+      ...formatOf(start.format),
       phasors,
       analogs,
       digitals,
-      nominalHz: view.getUint16(p) & NOMINAL_50 ? 50 : 60,
+      nominalHz: nominalHzOf(view.getUint16(p)),
       configurationCount: view.getUint16(p + 2),
     });
     p += 4;
@@ -126,15 +146,9 @@ export function encodeConfig(config: StreamConfig, type: "configuration-1" | "co
   p += streamStart.size;
   for (const unit of config.units) {
     text(unit.name);
-    const format = formatBits.write({
-      polar: Number(unit.phasorsArePolar),
-      phasorFloat: Number(unit.phasorsAreFloat),
-      analogFloat: Number(unit.analogsAreFloat),
-      frequencyFloat: Number(unit.frequencyIsFloat),
-    });
     unitStart.write(view, p, {
       idCode: unit.idCode,
-      format,
+      format: formatWordOf(unit),
       phasorCount: unit.phasors.length,
       analogCount: unit.analogs.length,
       digitalCount: unit.digitals.length,
@@ -145,7 +159,7 @@ export function encodeConfig(config: StreamConfig, type: "configuration-1" | "co
     for (const phasor of unit.phasors) word((phasor.kind === "voltage" ? 0 : 1) * 2 ** 24 + Math.round(phasor.perBit / PER_BIT));
     for (const analog of unit.analogs) word(analogKinds.indexOf(analog.kind) * 2 ** 24 + (analog.scale & 0xff_ffff));
     for (const digital of unit.digitals) word(digital.normal * 65_536 + digital.valid);
-    view.setUint16(p, unit.nominalHz === 50 ? NOMINAL_50 : 0);
+    view.setUint16(p, nominalWordOf(unit.nominalHz));
     view.setUint16(p + 2, unit.configurationCount);
     p += 4;
   }

@@ -29,7 +29,7 @@ function defect(code: FrameDefect, skipBytes: number): Look {
 }
 
 /** @param largest  frames above this are a false start: from the configuration, so that one cannot hold the queue for long */
-export function lookAt(bytes: Uint8Array, at: number, end: number, largest: number): Look {
+function lookAt(bytes: Uint8Array, at: number, end: number, largest: number): Look {
   if (bytes[at] !== SYNC_BYTE) {
     let skip = 1;
     while (at + skip < end && bytes[at + skip] !== SYNC_BYTE) skip++;

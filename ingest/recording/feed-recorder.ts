@@ -6,10 +6,10 @@
  *
  * A crash may tear the last frame and the last pair; readers cut both. Written in batches by one timer for all feeds, so that recording costs a copy.
  */
-import { createWriteStream, mkdirSync, readdirSync, rmSync, statSync, type WriteStream } from "node:fs";
+import { createWriteStream, readdirSync, rmSync, statSync, type WriteStream } from "node:fs";
 import { join } from "node:path";
 import { timeUsOf, typeOf } from "../c37118/index.ts";
-import { RecordingError } from "../recording-error.ts";
+import { makeRecordingFolder } from "../recording-error.ts";
 import { INDEX_SUFFIX, RECORDING_SUFFIX, startUsOf } from "./file-names.ts";
 
 export interface RotationOptions {
@@ -58,11 +58,7 @@ export class FeedRecorder {
     this.#rotation = rotation;
     this.#onTrouble = onTrouble;
     this.#isHeld = isHeld;
-    try {
-      mkdirSync(folder, { recursive: true });
-    } catch (cause) {
-      throw new RecordingError("unwritable", `${folder}: cannot be made: ${(cause as Error).message}`, cause);
-    }
+    makeRecordingFolder(folder);
   }
 
   /** A whole frame as received; its bytes are copied. */

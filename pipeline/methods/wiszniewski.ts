@@ -19,7 +19,7 @@ export function wiszniewski(v: Complex, i: Complex, deltaI: Complex, z1: Complex
  * Share of the fault's superimposed current that comes from this end: ((1 − m)·Z1 + ZsFar)/(ZsNear + Z1 + ZsFar).
  * Source: superposition on the lumped line; any text on fault location.
  */
-export function distributionFactor(m: number, z1: Complex, sourceNear: Complex, sourceFar: Complex): Complex {
+function distributionFactor(m: number, z1: Complex, sourceNear: Complex, sourceFar: Complex): Complex {
   return div(add(scale(z1, 1 - m), sourceFar), add(add(sourceNear, z1), sourceFar));
 }
 

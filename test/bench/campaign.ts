@@ -58,7 +58,7 @@ lines:
 );
 
 /** The network with these units; undefined leaves an end unmeasured. */
-export function networkWith(units: readonly (UnitKind | undefined)[], constants?: Line["constants"]): Network {
+function networkWith(units: readonly (UnitKind | undefined)[], constants?: Line["constants"]): Network {
   const line = base.lines[0]!;
   const terminals = line.terminals.map((t, k): Terminal => {
     if (units[k]) return t;

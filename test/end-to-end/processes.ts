@@ -4,7 +4,7 @@ import { existsSync } from "node:fs";
 import { createInterface } from "node:readline";
 import { fileURLToPath } from "node:url";
 
-export const program = fileURLToPath(new URL("../../dist/spanmark.js", import.meta.url));
+const program = fileURLToPath(new URL("../../dist/spanmark.js", import.meta.url));
 if (!existsSync(program)) throw new Error("dist/spanmark.js is missing: run `npm run build` first (`npm test` does)");
 
 export interface Running {

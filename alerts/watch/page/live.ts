@@ -14,10 +14,9 @@ export const serverNowMs = signal(0);
 /** Seconds since the server was last heard; its claims are covered when this grows. */
 export const silentS = signal(0);
 export const chosen = signal<string | undefined>(undefined);
-export const isConnected = signal(false);
 
 /** The pulse comes every second: three missed is news, long before claims are fifteen seconds old. */
-export const LOST_AFTER_S = 3.5;
+const LOST_AFTER_S = 3.5;
 export const isLost = computed(() => silentS.value > LOST_AFTER_S);
 
 let serverAtMs = 0;
@@ -37,7 +36,6 @@ function open(): void {
   socket = new WebSocket(`${location.protocol === "https:" ? "wss" : "ws"}://${location.host}/live`);
   socket.onmessage = (event) => hear(JSON.parse(String(event.data)) as ToPage);
   socket.onclose = () => {
-    isConnected.value = false;
     setTimeout(open, 1000);
   };
 }
@@ -51,7 +49,6 @@ function hear(message: ToPage): void {
   serverAtMs = message.serverTimeUs / 1000;
   serverNowMs.value = serverAtMs;
   silentS.value = 0;
-  isConnected.value = true;
   if (message.kind === "hello") {
     network.value = message.network;
     incidents.value = message.incidents;
